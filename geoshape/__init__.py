@@ -1,0 +1,1 @@
+"""Measure the shape of polygons on equal-area ground."""

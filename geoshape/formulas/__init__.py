@@ -1,0 +1,1 @@
+"""Formulas on rings, in NumPy only."""

@@ -1,0 +1,1 @@
+"""Layers on disk: reading, writing, names and lineage."""
