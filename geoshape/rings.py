@@ -109,8 +109,8 @@ class RingBatch:
 
     def sum_ring_values(self, values: FloatArray) -> FloatArray:
         """Sum values of rings by feature; a feature without rings gets 0."""
-        total: FloatArray = np.bincount(self.ring_feature, weights=values, minlength=self.n_features)
-        return total.astype(np.float64, copy=False)
+        total = np.bincount(self.ring_feature, weights=values, minlength=self.n_features)
+        return np.asarray(total, dtype=np.float64)
 
     def sum_features(self, values: FloatArray) -> FloatArray:
         """Sum values of vertices (or of the edges that start there) by feature."""
