@@ -1,0 +1,1 @@
+"""Decisions on measured tables: flag, match, group, compare, summarise, redraw."""
