@@ -1,0 +1,178 @@
+"""Convex hulls of many features at once.
+
+The hull vertices of a simple ring stand in the ring's own order. So the points that may still lie outside a known chord
+of the hull are a contiguous run, and the farthest of each run is found for all runs of all features in one pass.
+"""
+
+from __future__ import annotations
+
+import numpy as np
+
+from geoshape.rings import BoolArray, FloatArray, IntArray, RingBatch
+
+HULL_TOLERANCE = 1e-14
+"""Distance outside a chord, relative to the ring's extent, that is taken for rounding."""
+
+
+def convex_hulls(batch: RingBatch) -> RingBatch:
+    """Take the convex hull of each feature.
+
+    Parameters
+    ----------
+    batch : RingBatch
+        Simple exteriors, counter-clockwise; holes do not matter.
+
+    Returns
+    -------
+    RingBatch
+        At most one ring a feature, counter-clockwise; it may hold points in the middle of a hull edge. Features
+        without rings have none.
+    """
+    exteriors = batch.take_rings(~batch.ring_is_hole)
+    if not exteriors.n_rings:
+        return exteriors
+    by_ring = _ring_hulls(exteriors)
+    rings_per_feature = np.bincount(by_ring.ring_feature, minlength=by_ring.n_features)
+    if rings_per_feature.max() > 1:
+        by_ring = _merged(by_ring, rings_per_feature)
+    return by_ring
+
+
+def _ring_hulls(rings: RingBatch) -> RingBatch:
+    index, is_hull = _outside_of_extremes(rings)
+    ring = rings.vertex_ring[index]
+    x, y = rings.x[index], rings.y[index]
+    tolerance = HULL_TOLERANCE * _ring_extent(rings)
+    while not is_hull.all():
+        start = np.flatnonzero(is_hull)
+        run = np.diff(np.append(start, len(index)))
+        end = _next_in_group(start, ring[start])
+        chord_x, chord_y = x[end] - x[start], y[end] - y[start]
+        outside = _distance_right(x, y, (x[start], y[start], chord_x, chord_y), run)
+        candidate = ~is_hull & (outside > tolerance[ring])
+        outside[~candidate] = -np.inf
+        farthest = np.repeat(np.maximum.reduceat(outside, start), run)
+        is_hull |= candidate & (outside == farthest)
+        keep = is_hull | candidate
+        index, ring, x, y, is_hull = index[keep], ring[keep], x[keep], y[keep], is_hull[keep]
+    return rings.take_vertices(index, np.bincount(ring, minlength=rings.n_rings))
+
+
+def _ring_extent(rings: RingBatch) -> FloatArray:
+    first = rings.ring_start[:-1]
+    width = np.maximum.reduceat(rings.x, first) - np.minimum.reduceat(rings.x, first)
+    height = np.maximum.reduceat(rings.y, first) - np.minimum.reduceat(rings.y, first)
+    return np.asarray(width + height)
+
+
+def _distance_right(
+    x: FloatArray, y: FloatArray, chord: tuple[FloatArray, FloatArray, FloatArray, FloatArray], run: IntArray
+) -> FloatArray:
+    """Measure how far points lie to the right of the chord of their run: outside, for a counter-clockwise hull."""
+    start_x, start_y, chord_x, chord_y = chord
+    length = np.hypot(chord_x, chord_y)
+    safe_length = np.where(length > 0, length, 1.0)
+    unit_x, unit_y = np.repeat(chord_x / safe_length, run), np.repeat(chord_y / safe_length, run)
+    return np.asarray((x - np.repeat(start_x, run)) * unit_y - (y - np.repeat(start_y, run)) * unit_x)
+
+
+def _next_in_group(item: IntArray, group: IntArray) -> IntArray:
+    """Give for each item the next of its group, cyclic; groups are contiguous."""
+    first = np.flatnonzero(np.diff(group, prepend=group[0] - 1))
+    following = np.roll(item, -1)
+    following[np.append(first[1:], len(item)) - 1] = item[first]
+    return following
+
+
+def _extremes(rings: RingBatch) -> IntArray:
+    """Find a vertex farthest in each of eight directions for each ring, sorted in ring order."""
+    first = rings.ring_start[:-1]
+    found = []
+    for value in (rings.x, rings.y, rings.x + rings.y, rings.x - rings.y):
+        for extreme in (np.maximum, np.minimum):
+            at = np.flatnonzero(value == np.repeat(extreme.reduceat(value, first), rings.ring_size))
+            owner = rings.vertex_ring[at]
+            found.append(at[np.flatnonzero(np.diff(owner, prepend=-1))])
+    return np.unique(np.concatenate(found))
+
+
+def _outside_of_extremes(rings: RingBatch) -> tuple[IntArray, BoolArray]:
+    """Keep the extremes and what lies outside their chords, each ring turned to begin at an extreme."""
+    extremes = _extremes(rings)
+    owner = rings.vertex_ring[extremes]
+    following = _next_in_group(extremes, owner)
+    chord_x, chord_y = rings.x[following] - rings.x[extremes], rings.y[following] - rings.y[extremes]
+    # A run goes from one extreme to the next; what stands before a ring's first extreme belongs to its last.
+    run_start = np.union1d(extremes, rings.ring_start[:-1])
+    extreme_before = np.searchsorted(extremes, run_start, side="right") - 1
+    last_of_ring = np.searchsorted(owner, np.arange(rings.n_rings), side="right") - 1
+    run_ring = rings.vertex_ring[run_start]
+    is_wrapped = (extreme_before < 0) | (owner[np.maximum(extreme_before, 0)] != run_ring)
+    extreme_before = np.where(is_wrapped, last_of_ring[run_ring], extreme_before)
+    run = np.diff(np.append(run_start, rings.n_vertices))
+    chord = (
+        rings.x[extremes][extreme_before],
+        rings.y[extremes][extreme_before],
+        chord_x[extreme_before],
+        chord_y[extreme_before],
+    )
+    keep = _distance_right(rings.x, rings.y, chord, run) > 0
+    keep[extremes] = True
+    wrapped = np.repeat(is_wrapped, run)[keep]
+    index = np.flatnonzero(keep)
+    order = np.argsort(index + rings.ring_start[rings.vertex_ring[index]] + _turn(rings, index, wrapped), kind="stable")
+    index = index[order]
+    is_extreme = np.zeros(rings.n_vertices, dtype=np.bool_)
+    is_extreme[extremes] = True
+    return index, is_extreme[index]
+
+
+def _turn(rings: RingBatch, index: IntArray, wrapped: BoolArray) -> IntArray:
+    return np.where(wrapped, rings.ring_size[rings.vertex_ring[index]], 0)
+
+
+def _merged(hulls: RingBatch, rings_per_feature: IntArray) -> RingBatch:
+    """Replace the hulls of the parts of a feature by the hull of them all."""
+    several = rings_per_feature[hulls.vertex_feature] > 1
+    index = np.flatnonzero(several)
+    merged = index[_point_hulls(hulls.x[index], hulls.y[index], hulls.vertex_feature[index])]
+    rest = np.flatnonzero(~several)
+    feature = np.concatenate((hulls.vertex_feature[rest], hulls.vertex_feature[merged]))
+    index = np.concatenate((rest, merged))[np.argsort(feature, kind="stable")]
+    size = np.bincount(feature, minlength=hulls.n_features)
+    owner = np.flatnonzero(size)
+    return RingBatch(
+        x=hulls.x[index],
+        y=hulls.y[index],
+        ring_start=np.concatenate(([0], np.cumsum(size[owner]))),
+        ring_part=np.arange(len(owner)),
+        ring_is_hole=np.zeros(len(owner), dtype=np.bool_),
+        part_feature=owner,
+        n_features=hulls.n_features,
+        origin=hulls.origin,
+    )
+
+
+def _point_hulls(x: FloatArray, y: FloatArray, group: IntArray) -> IntArray:
+    """Find the hulls of groups of points: indices, group by group, counter-clockwise."""
+    order = np.lexsort((y, x, group))
+    lower = _chain(x, y, group, order)
+    upper = _chain(x, y, group, order[::-1])
+    # Each chain ends where the other begins.
+    lower = lower[np.flatnonzero(np.diff(group[lower], append=-1) == 0)]
+    upper = upper[np.flatnonzero(np.diff(group[upper], append=-1) == 0)]
+    chains = np.concatenate((lower, upper))
+    return chains[np.argsort(group[chains], kind="stable")]
+
+
+def _chain(x: FloatArray, y: FloatArray, group: IntArray, order: IntArray) -> IntArray:
+    """Drop, until none is left, the points that do not turn left between their neighbours in the sorted chain."""
+    while True:
+        before, after = np.roll(order, 1), np.roll(order, -1)
+        inner = (group[before] == group[order]) & (group[after] == group[order])
+        inner[[0, -1]] = False
+        turn = (x[order] - x[before]) * (y[after] - y[before]) - (y[order] - y[before]) * (x[after] - x[before])
+        drop = inner & (turn <= 0)
+        if not drop.any():
+            return order
+        order = order[~drop]
