@@ -109,11 +109,13 @@ def read_wkb(values: Sequence[bytes | None] | ObjectArray) -> tuple[ObjectArray,
         Why a row that holds something has no geometry.
     """
     buffers = np.asarray(values, dtype=object)
-    try:
-        geometries = shapely.from_wkb(buffers, on_invalid="fix")
-    except NotImplementedError:
-        # One curve stops the whole array: take this batch row by row.
-        geometries = np.array([_one_from_wkb(value) for value in buffers], dtype=object)
+    # NaN coordinates are found later; here they would only raise a warning.
+    with np.errstate(invalid="ignore"):
+        try:
+            geometries = shapely.from_wkb(buffers, on_invalid="fix")
+        except NotImplementedError:
+            # One curve stops the whole array: take this batch row by row.
+            geometries = np.array([_one_from_wkb(value) for value in buffers], dtype=object)
     lost = np.flatnonzero(
         shapely.is_missing(geometries) & np.array([value is not None for value in buffers], dtype=bool)
     )

@@ -1,6 +1,6 @@
 """Measure a batch of geometries: from what was read to columns, with a status and a note for every row.
 
-Nothing here reads, writes or prints, and no fault of a feature raises: what cannot be measured is null, with its reason.
+Nothing here reads, writes or prints, and no fault of a feature raises: what cannot be measured is null with its reason.
 """
 
 from __future__ import annotations
