@@ -1,0 +1,115 @@
+"""GDAL's filters for layers that GDAL does not read: SQL conditions and boxes."""
+
+from __future__ import annotations
+
+import io
+from dataclasses import dataclass
+
+import numpy as np
+import pyarrow as pa
+import pyarrow.types as pt
+import shapely
+from pyogrio.raw import read_arrow, write_arrow
+
+from geoshape.errors import ReadError
+from geoshape.layers.layer import Bounds
+from geoshape.layers.vector import Failure, one_line, quiet
+from geoshape.rings import BoolArray
+
+_ROW = "geoshape_row_number"
+# Holds attributes without geometry in memory, and is filtered in GDAL's own dialect of SQL.
+_DRIVER = "FlatGeobuf"
+
+
+@dataclass(frozen=True)
+class Filter:
+    """A condition in GDAL's own dialect of SQL, on rows that stand in Arrow batches.
+
+    Attributes
+    ----------
+    where : str
+        The condition.
+    """
+
+    where: str
+
+    def keeps(self, attributes: pa.RecordBatch) -> BoolArray:
+        """Say which rows the condition holds for.
+
+        Parameters
+        ----------
+        attributes : pyarrow.RecordBatch, (n,)
+
+        Returns
+        -------
+        (n,) bool
+            False where the condition is false or null.
+
+        Raises
+        ------
+        RuntimeError or ValueError
+            GDAL cannot use the condition.
+        """
+        keep = np.zeros(attributes.num_rows, dtype=np.bool_)
+        if not attributes.num_rows:
+            return keep
+        data = _in_memory(attributes)
+        with quiet():
+            # All columns: this driver finds no row when the one asked about is left out of the result.
+            _, rows = read_arrow(data, read_geometry=False, where=self.where)
+        keep[rows.column(_ROW).to_numpy()] = True
+        return keep
+
+
+def _in_memory(attributes: pa.RecordBatch) -> io.BytesIO:
+    fields = [(field, attributes.column(i)) for i, field in enumerate(attributes.schema) if _is_plain(field.type)]
+    numbers = pa.array(np.arange(attributes.num_rows), pa.int64())
+    columns = {field.name: column for field, column in fields} | {_ROW: numbers}
+    data = io.BytesIO()
+    with quiet():
+        write_arrow(pa.table(columns), data, driver=_DRIVER, layer="rows", layer_options={"SPATIAL_INDEX": "NO"})
+    data.seek(0)
+    return data
+
+
+def _is_plain(kind: pa.DataType) -> bool:
+    return not (pt.is_nested(kind) or pt.is_binary(kind) or pt.is_null(kind))
+
+
+def check_where(path: str, schema: pa.Schema, where: str) -> None:
+    """Raise a ReadError where GDAL cannot use a condition on these columns."""
+    one = pa.RecordBatch.from_arrays([pa.nulls(1, field.type) for field in schema], schema=schema)
+    data = _in_memory(one)
+    try:
+        with quiet():
+            name = '"rows"'
+            read_arrow(data, sql=f"SELECT * FROM {name} WHERE {where}", sql_dialect="OGRSQL")  # noqa: S608
+            data.seek(0)
+            read_arrow(data, where=where)
+    except Failure as error:
+        text = one_line(error).split(" Occurred around", maxsplit=1)[0]
+        fields = ", ".join(schema.names)
+        raise ReadError(f"{path}: --where {where!r} cannot be used ({text}); the layer's columns are: {fields}") from None
+
+
+def meets_box(geometry: pa.BinaryArray, bbox: Bounds) -> BoolArray:
+    """Say whose envelope meets a box.
+
+    Parameters
+    ----------
+    geometry : pyarrow.BinaryArray, (n,)
+    bbox : (x_min, y_min, x_max, y_max)
+
+    Returns
+    -------
+    (n,) bool
+        False for null, empty and unreadable geometries.
+    """
+    wkb = np.asarray(geometry.to_numpy(zero_copy_only=False), dtype=object)
+    bounds = shapely.bounds(shapely.from_wkb(wkb, on_invalid="ignore"))
+    x_min, y_min, x_max, y_max = bbox
+    # NaN of an empty geometry compares as false.
+    return np.asarray(
+        (bounds[:, 0] <= x_max) & (bounds[:, 2] >= x_min) & (bounds[:, 1] <= y_max) & (bounds[:, 3] >= y_min),
+        dtype=np.bool_,
+    )
