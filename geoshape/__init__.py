@@ -17,9 +17,9 @@ if TYPE_CHECKING:
     from geoshape.frames import measure as measure
     from geoshape.options import Family as Family
     from geoshape.options import MeasureOptions as MeasureOptions
+    from geoshape.options import Source as Source
+    from geoshape.options import Target as Target
     from geoshape.run import RunSummary as RunSummary
-    from geoshape.run import Source as Source
-    from geoshape.run import Target as Target
     from geoshape.run import measure_file as measure_file
 
 __version__ = "0.1.0"
@@ -34,8 +34,8 @@ _HOMES = {
     "Family": "options",
     "MeasureOptions": "options",
     "RunSummary": "run",
-    "Source": "run",
-    "Target": "run",
+    "Source": "options",
+    "Target": "options",
     "measure_file": "run",
 }
 

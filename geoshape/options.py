@@ -1,9 +1,10 @@
-"""Options of a measurement: frozen, typed, checked when built."""
+"""Options of a measurement, and where it reads and writes: frozen, typed, checked when built."""
 
 from __future__ import annotations
 
 from dataclasses import dataclass
 from enum import StrEnum
+from pathlib import Path
 from typing import TypeVar
 
 from geoshape.errors import OptionError
@@ -155,3 +156,47 @@ _ENUM_FIELDS: dict[str, type[StrEnum]] = {
     "holes": Holes,
     "invalid": Invalid,
 }
+
+
+Bounds = tuple[float, float, float, float]
+
+
+@dataclass(frozen=True, kw_only=True)
+class Source:
+    """A layer to read, or a part of it.
+
+    Attributes
+    ----------
+    path : str or Path
+        File, archive or anything else that GDAL opens.
+    layer : str or None
+        Name of the layer; needed where the file holds several.
+    where : str or None
+        Condition in SQL, as GDAL takes it.
+    bbox : (west, south, east, north) or None
+        Only features that touch this box, in the layer's CRS.
+    """
+
+    path: str | Path
+    layer: str | None = None
+    where: str | None = None
+    bbox: Bounds | None = None
+
+
+@dataclass(frozen=True, kw_only=True)
+class Target:
+    """Where a result goes.
+
+    Attributes
+    ----------
+    path : str or Path
+        File to write; its extension decides the format. ``-`` is CSV on standard output.
+    layer : str or None
+        Name of the new layer; the file's name where left out.
+    overwrite : bool
+        Whether a file or layer that is there may be replaced.
+    """
+
+    path: str | Path
+    layer: str | None = None
+    overwrite: bool = False

@@ -1,15 +1,75 @@
-"""Options of the command line that several commands share, each declared once."""
+"""Arguments and options that several commands share, each declared once.
+
+A bundle gathers the values of its options into one frozen object, so that a command takes a source, a target, options
+of measuring and a manner of working instead of two dozen loose values.
+"""
 
 from __future__ import annotations
 
 from collections.abc import Callable
-from typing import Any, TypeVar
+from dataclasses import dataclass
+from functools import wraps
+from typing import Any
 
 import click
 
-from geoshape.options import DEFAULT_FAMILIES, Family
+from geoshape.options import (
+    DEFAULT_FAMILIES,
+    GROUND_CENTRED,
+    Edges,
+    Family,
+    Holes,
+    Invalid,
+    MeasureOptions,
+    Parts,
+    Source,
+    Spectrum,
+    Target,
+)
 
-Command = TypeVar("Command", bound=Callable[..., Any])
+Function = Callable[..., Any]
+Decorator = Callable[[Function], Function]
+
+
+@dataclass(frozen=True)
+class Manner:
+    """How a command works and reports.
+
+    Attributes
+    ----------
+    jobs : int
+        Processes that measure.
+    as_json : bool
+        Whether the summary goes to standard output as JSON.
+    quiet, verbose : bool
+        Whether only errors are shown, or more than usual.
+    """
+
+    jobs: int
+    as_json: bool
+    quiet: bool
+    verbose: bool
+
+
+def _bundle(name: str, build: Callable[[dict[str, Any]], object], *parameters: Decorator) -> Decorator:
+    def decorate(command: Function) -> Function:
+        @wraps(command)
+        def gathered(**values: Any) -> Any:
+            own = {key: values.pop(key) for key in keys}
+            values[name] = build(own)
+            return command(**values)
+
+        before = {parameter.name for parameter in getattr(command, "__click_params__", [])}
+        for parameter in reversed(parameters):
+            gathered = parameter(gathered)
+        keys = [
+            str(parameter.name)
+            for parameter in gathered.__click_params__  # type: ignore[attr-defined]
+            if parameter.name not in before
+        ]
+        return gathered
+
+    return decorate
 
 
 class FamilyList(click.ParamType[tuple[Family, ...]]):
@@ -35,4 +95,135 @@ families_option = click.option(
     default=",".join(DEFAULT_FAMILIES),
     show_default=True,
     help="Families of columns to compute, separated by commas.",
+)
+
+harmonics_option = click.option(
+    "--harmonics", type=int, default=8, show_default=True, help="Highest harmonic with its own columns."
+)
+
+log_moments_option = click.option(
+    "--log-moments", is_flag=True, help="Add the signed log10 of the Hu invariants beside the raw ones."
+)
+
+prefix_option = click.option("--prefix", default="", help="Put this before the name of every new column.")
+
+input_argument = click.argument("input_path", metavar="INPUT")
+
+source_options = _bundle(
+    "source",
+    lambda values: Source(path=values["input_path"], layer=values["layer"], where=values["where"], bbox=values["bbox"]),
+    input_argument,
+    click.option("--layer", help="Layer to read, where the file holds several."),
+    click.option("--where", metavar="SQL", help="Read only rows that meet this condition, in SQL as GDAL takes it."),
+    click.option(
+        "--bbox",
+        nargs=4,
+        type=float,
+        default=None,
+        metavar="WEST SOUTH EAST NORTH",
+        help="Read only rows that touch this box, in the layer's CRS.",
+    ),
+)
+
+target_options = _bundle(
+    "target",
+    lambda values: Target(path=values["output_path"], layer=values["output_layer"], overwrite=values["overwrite"]),
+    click.argument("output_path", metavar="OUTPUT"),
+    click.option("--output-layer", help="Name of the new layer; the file's name where left out."),
+    click.option("--overwrite", is_flag=True, help="Replace a file or layer that is there."),
+)
+
+
+def _choice(kind: type[Edges | Spectrum | Parts | Holes | Invalid]) -> click.Choice[str]:
+    return click.Choice([str(member) for member in kind])
+
+
+measure_options = _bundle(
+    "options",
+    lambda values: MeasureOptions(**values),
+    click.option(
+        "--ground",
+        default=GROUND_CENTRED,
+        show_default=True,
+        metavar="centred|layer|plane|CRS",
+        help="Where shapes are measured: an equal-area plane centred on each, one for the layer, the coordinates as"
+        " they are, or an equal-area CRS of your choice.",
+    ),
+    click.option("--assume-crs", metavar="CRS", help="CRS of a layer that does not say its own."),
+    click.option(
+        "--edges",
+        type=_choice(Edges),
+        default=str(Edges.SOURCE),
+        show_default=True,
+        help="Edges are straight in the layer's own coordinates, or on the plane.",
+    ),
+    families_option,
+    click.option(
+        "--samples", type=int, default=256, show_default=True, help="Points at equal arc length along the outline."
+    ),
+    harmonics_option,
+    click.option(
+        "--spectrum",
+        type=_choice(Spectrum),
+        default=str(Spectrum.SAMPLED),
+        show_default=True,
+        help="Fourier coefficients from the samples, or in closed form from the polygon.",
+    ),
+    click.option(
+        "--parts",
+        type=_choice(Parts),
+        default=str(Parts.WHOLE),
+        show_default=True,
+        help="One row a feature, or one row a part.",
+    ),
+    click.option(
+        "--holes",
+        type=_choice(Holes),
+        default=str(Holes.KEEP),
+        show_default=True,
+        help="Holes are kept, or filled before anything is measured.",
+    ),
+    click.option(
+        "--invalid",
+        type=_choice(Invalid),
+        default=str(Invalid.REPAIR),
+        show_default=True,
+        help="Invalid geometries are repaired for measuring, get nulls, or stop the run.",
+    ),
+    log_moments_option,
+    prefix_option,
+)
+
+
+def _default_jobs() -> int:
+    from geoshape.pool import usable_cores
+
+    return usable_cores()
+
+
+def _set_color(ctx: click.Context, _: click.Parameter, value: bool) -> None:  # noqa: FBT001 - click calls it so
+    if value:
+        ctx.color = False
+
+
+no_color_option = click.option(
+    "--no-color", is_flag=True, expose_value=False, callback=_set_color, help="No colours; NO_COLOR does the same."
+)
+
+json_option = click.option("--json", "as_json", is_flag=True, help="Write the result as JSON on standard output.")
+
+manner_options = _bundle(
+    "manner",
+    lambda values: Manner(values["jobs"], values["as_json"], values["quiet"], values["verbose"]),
+    click.option(
+        "--jobs",
+        type=click.IntRange(min=1),
+        default=_default_jobs,
+        show_default="all cores",
+        help="Processes that measure.",
+    ),
+    json_option,
+    click.option("-q", "--quiet", is_flag=True, help="Show errors only."),
+    click.option("-v", "--verbose", is_flag=True, help="Show more: every warning, versions, time of each part."),
+    no_color_option,
 )
