@@ -6,11 +6,11 @@ import numpy as np
 
 from geoshape.rings import BoolArray, FloatArray, RingBatch
 
-MIN_STAIRCASE_VERTICES = 12
+MIN_RIGHT_ANGLES = 12
 """Fewer right-angled turns are a house or a field as well as a few pixels."""
 
-MIN_RIGHT_ANGLES = 0.95
-"""Share of an outline's turns that must be right angles."""
+MIN_SHARE = 0.95
+"""Share of an outline's edges that must follow the edges of pixels."""
 
 STEP_TOLERANCE = 1e-3
 """How far a step may be from a whole number of pixels."""
@@ -30,9 +30,9 @@ def is_staircase(batch: RingBatch) -> BoolArray:
     Returns
     -------
     (n_features,) bool
-        True where an exterior has at least 12 vertices, 95 % of its edges lie along the axes, edges change direction
-        at each vertex, and each edge is a whole number of pixels long. The perimeter of such an outline is longer than
-        that of the thing it stands for, by 4/pi on average over directions.
+        True where an exterior has at least 12 right angles, and 95 % of its edges lie along the axes and are a whole
+        number of pixels long. The perimeter of such an outline is longer than that of the thing it stands for, by 4/pi
+        on average over directions.
     """
     rings = batch.take_rings(~batch.ring_is_hole)
     found = np.zeros(batch.n_features, dtype=np.bool_)
@@ -43,12 +43,9 @@ def is_staircase(batch: RingBatch) -> BoolArray:
     along_y = dx <= ANGLE_TOLERANCE * dy
     before_x = _before(rings, along_x)
     turns = (along_x & ~before_x) | (along_y & before_x)
-    whole = _is_whole(rings, dx, along_x) & _is_whole(rings, dy, along_y)
-    size = rings.ring_size.astype(np.float64)
-    stepped = (
-        (rings.ring_size >= MIN_STAIRCASE_VERTICES)
-        & (rings.sum_rings(turns.astype(np.float64)) >= MIN_RIGHT_ANGLES * size)
-        & (rings.sum_rings(whole.astype(np.float64)) >= MIN_RIGHT_ANGLES * size)
+    follows = (along_x | along_y) & _is_whole(rings, dx, along_x) & _is_whole(rings, dy, along_y)
+    stepped = (rings.sum_rings(turns.astype(np.float64)) >= MIN_RIGHT_ANGLES) & (
+        rings.sum_rings(follows.astype(np.float64)) >= MIN_SHARE * rings.ring_size
     )
     found[rings.ring_feature[stepped]] = True
     return found
