@@ -12,7 +12,8 @@ import shapely
 from geoshape.columns import Column, Kind, columns_for
 from geoshape.errors import ColumnNameError, GroundWarning
 from geoshape.geometry import ObjectArray
-from geoshape.ground.equal_area import plan_ground, resolve_crs
+from geoshape.ground.equal_area import plan_ground
+from geoshape.ground.layer_crs import resolve_crs
 from geoshape.ground.place import Ground, open_ground
 from geoshape.measure import ColumnValues, Measured, measure_geometries
 from geoshape.options import MeasureOptions

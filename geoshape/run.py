@@ -17,7 +17,8 @@ import shapely
 from geoshape.columns import Column, columns_for
 from geoshape.errors import OptionError
 from geoshape.geometry import read_wkb
-from geoshape.ground.equal_area import GroundPlan, plan_ground, resolve_crs
+from geoshape.ground.equal_area import GroundPlan, plan_ground
+from geoshape.ground.layer_crs import resolve_crs
 from geoshape.ground.place import open_ground
 from geoshape.layers.lineage import Lineage
 from geoshape.layers.plan import LayerContent, OutputPlan, plan_output
