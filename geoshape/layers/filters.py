@@ -13,7 +13,7 @@ from pyogrio.raw import read_arrow, write_arrow
 
 from geoshape.errors import ReadError
 from geoshape.layers.layer import Bounds
-from geoshape.layers.vector import Failure, one_line, quiet
+from geoshape.layers.vector_reader import Failure, one_line, quiet
 from geoshape.rings import BoolArray
 
 _ROW = "geoshape_row_number"

@@ -11,7 +11,7 @@ from collections.abc import Iterator
 from dataclasses import dataclass, replace
 
 from geoshape.errors import LayerChoiceError, OptionError
-from geoshape.layers import geoparquet, vector
+from geoshape.layers import parquet_reader, vector_reader
 from geoshape.layers.layer import Bounds, LayerBatch, LayerInfo, LayerSummary
 from geoshape.layers.recut import recut
 from geoshape.layers.sources import data_sets, is_parquet
@@ -56,7 +56,7 @@ def list_layers(path: str | os.PathLike[str]) -> tuple[LayerSummary, ...]:
 def _entries(path: str) -> list[_Entry]:
     entries = []
     for source in data_sets(path):
-        found = geoparquet.summaries(path, source) if is_parquet(source) else vector.summaries(path, source)
+        found = parquet_reader.summaries(path, source) if is_parquet(source) else vector_reader.summaries(path, source)
         entries += [_Entry(source, summary) for summary in found]
     return entries
 
@@ -106,7 +106,7 @@ def open_layer(
         _check_bbox(bbox)
     entries = _entries(text)
     chosen = _choose(text, entries, layer)
-    describe = geoparquet.describe if is_parquet(chosen.source) else vector.describe
+    describe = parquet_reader.describe if is_parquet(chosen.source) else vector_reader.describe
     info = describe(text, chosen.source, chosen.summary.name, where, bbox)
     return replace(info, layer_names=tuple(entry.summary.name for entry in entries))
 
@@ -164,5 +164,5 @@ def read_batches(info: LayerInfo, *, max_vertices: int = MAX_VERTICES) -> Iterat
     >>> sum(batch.n_rows for batch in read_batches(info))
     177
     """
-    stream = geoparquet.stream(info) if is_parquet(info.source) else vector.stream(info)
+    stream = parquet_reader.stream(info) if is_parquet(info.source) else vector_reader.stream(info)
     return recut(stream, max_vertices)

@@ -13,7 +13,7 @@ import pyogrio
 import pyproj
 from pyogrio.raw import open_arrow
 
-from geoshape.errors import GeoshapeWarning, ReadError
+from geoshape.errors import ReadError
 from geoshape.layers.attributes import is_wkb_field, plain_array, plain_field
 from geoshape.layers.layer import Bounds, LayerInfo, LayerSummary
 from geoshape.layers.recut import Rows
@@ -25,6 +25,8 @@ _MAX_ROWS_PER_READ = 4096
 _DEFAULT_ROWS_PER_READ = 1024
 _DEFAULT_GEOMETRY_NAME = "wkb_geometry"
 _MEASURED = "Measured (M) geometry types are not supported"
+# Warnings that pyogrio ascribes to its caller.
+_FROM_PYOGRIO = (_MEASURED, "'crs' was not provided")
 # Names that GeoPackage (OGC 12-128r19, clause 1.1.2.1.2) and GDAL give to the absence of a CRS.
 _NO_CRS = frozenset({"undefined cartesian srs", "undefined geographic srs", "undefined srs", "unknown"})
 # GDAL's own Arrow reader of this format forgets to close the offsets of rows without geometry.
@@ -41,17 +43,22 @@ def one_line(error: BaseException | str) -> str:
 
 @contextmanager
 def quiet() -> Iterator[list[str]]:
-    """Collect what GDAL complains of, instead of having it printed."""
+    """Collect what GDAL complains of, instead of having it printed; other warnings are passed on at the end."""
     texts: list[str] = []
+    others: dict[tuple[type[Warning], str], warnings.WarningMessage] = {}
     with warnings.catch_warnings(record=True) as caught:
         warnings.simplefilter("always")
         try:
             yield texts
         finally:
-            texts += [one_line(str(w.message)) for w in caught if not issubclass(w.category, GeoshapeWarning)]
-    for w in caught:
-        if issubclass(w.category, GeoshapeWarning):
-            warnings.warn_explicit(w.message, w.category, w.filename, w.lineno)
+            for item in caught:
+                text = one_line(str(item.message))
+                if "pyogrio" in item.filename or text.startswith(_FROM_PYOGRIO):
+                    texts.append(text)
+                else:
+                    others.setdefault((item.category, text), item)
+    for item in others.values():
+        warnings.warn_explicit(item.message, item.category, item.filename, item.lineno)
 
 
 def _open_failure(path: str, error: BaseException) -> ReadError:

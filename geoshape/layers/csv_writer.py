@@ -1,0 +1,35 @@
+"""Tables without geometry as CSV."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable
+from typing import IO, Any
+
+import pyarrow as pa
+import pyarrow.csv as pa_csv
+
+
+def write_csv(sink: str | IO[bytes], schema: pa.Schema, rows: Iterable[list[pa.Array]]) -> None:
+    """Write rows as CSV (RFC 4180, UTF-8): null is empty, an empty text is quoted.
+
+    Parameters
+    ----------
+    sink : str or binary file
+    schema : pyarrow.Schema
+    rows : iterable of list of pyarrow.Array
+        Batches, in the schema.
+
+    Raises
+    ------
+    OSError
+        The sink takes no more.
+    """
+    options: dict[str, Any] = {"write_options": pa_csv.WriteOptions(quoting_style="needed")}
+    with pa_csv.CSVWriter(sink, pa.schema([pa.field(field.name, field.type) for field in schema]), **options) as writer:
+        for arrays in rows:
+            writer.write_batch(pa.RecordBatch.from_arrays(arrays, schema=writer_schema(schema)))
+
+
+def writer_schema(schema: pa.Schema) -> pa.Schema:
+    """Give a schema without the comments on its fields."""
+    return pa.schema([pa.field(field.name, field.type) for field in schema])

@@ -1,0 +1,132 @@
+"""Output is made in a folder beside its target and moved there when it is whole."""
+
+from __future__ import annotations
+
+import os
+import re
+import shutil
+import sqlite3
+import time
+from collections.abc import Iterator, Sequence
+from contextlib import closing, contextmanager, suppress
+from pathlib import Path
+
+from geoshape.errors import WriteError
+
+_PREFIX = ".geoshape-"
+_STALE_SECONDS = 86_400.0
+# Files of an older shapefile or GeoPackage that would be wrong beside a new one.
+_SIDECARS = {
+    ".shp": (".shx", ".dbf", ".prj", ".cpg", ".qix", ".sbn", ".sbx", ".fbn", ".fbx", ".ain", ".aih", ".atx", ".ixs")
+    + (".mxs", ".shp.xml"),
+}
+_JOURNALS = ("-wal", "-shm", "-journal")
+
+
+def staging_folder(target: Path) -> Path:
+    """Name the folder in which this process makes a target."""
+    return target.parent / f"{_PREFIX}{target.name}-{os.getpid()}"
+
+
+@contextmanager
+def staged(target: Path) -> Iterator[Path]:
+    """Make a folder beside a target, and remove it whatever happens.
+
+    Parameters
+    ----------
+    target : Path
+
+    Yields
+    ------
+    Path
+        The folder; left-overs of killed runs for the same target are removed first.
+
+    Raises
+    ------
+    WriteError
+        The folder cannot be made.
+    """
+    remove_litter(target)
+    folder = staging_folder(target)
+    try:
+        folder.mkdir()
+    except OSError as error:
+        raise WriteError(
+            f"{target}: nothing can be written in {target.parent} ({error.strerror}); choose another folder"
+        ) from None
+    try:
+        yield folder
+    finally:
+        shutil.rmtree(folder, ignore_errors=True)
+
+
+def remove_litter(target: Path) -> None:
+    """Remove what killed runs left of their attempts at the same target."""
+    pattern = re.compile(re.escape(f"{_PREFIX}{target.name}-") + r"(\d+)")
+    try:
+        entries = list(os.scandir(target.parent))
+    except OSError:
+        return
+    for entry in entries:
+        match = pattern.fullmatch(entry.name)
+        if match and entry.is_dir(follow_symlinks=False) and _is_abandoned(int(match[1]), Path(entry.path)):
+            shutil.rmtree(entry.path, ignore_errors=True)
+
+
+def _is_abandoned(pid: int, folder: Path) -> bool:
+    # A folder of our own number was left by an earlier process: in a container every run may have the same.
+    if pid == os.getpid():
+        return True
+    if os.name == "nt":
+        # There signal 0 is not a question but an interrupt; wait until nobody can still be at it.
+        return time.time() - folder.stat().st_mtime > _STALE_SECONDS
+    try:
+        os.kill(pid, 0)
+    except ProcessLookupError:
+        return True
+    except OSError:
+        return False
+    return False
+
+
+def publish(folder: Path, target: Path, names: Sequence[str]) -> None:
+    """Move finished files from the staging folder to the target's, the target itself last.
+
+    Parameters
+    ----------
+    folder : Path
+    target : Path
+    names : sequence of str
+        Files in the folder; the target's name must be among them.
+
+    Raises
+    ------
+    OSError
+        A file cannot be moved.
+    """
+    for stale in _stale(target, names):
+        with suppress(FileNotFoundError):
+            stale.unlink()
+    for name in sorted(names, key=lambda name: name == target.name):
+        (folder / name).replace(target.parent / name)
+
+
+def _stale(target: Path, names: Sequence[str]) -> list[Path]:
+    sidecars = [target.with_suffix(ending) for ending in _SIDECARS.get(target.suffix.lower(), ())]
+    journals = [target.with_name(target.name + ending) for ending in _JOURNALS if target.suffix.lower() == ".gpkg"]
+    return [path for path in [*sidecars, *journals] if path.name not in names]
+
+
+def copy_database(source: Path, copy: Path) -> None:
+    """Copy a GeoPackage, changes that wait in its journal included.
+
+    Raises
+    ------
+    sqlite3.Error
+        It is no database, or the copy cannot be written.
+    """
+    with (
+        closing(sqlite3.connect(f"{source.absolute().as_uri()}?mode=ro", uri=True)) as old,
+        closing(sqlite3.connect(copy)) as new,
+    ):
+        old.backup(new)

@@ -1,0 +1,216 @@
+"""Write layers: a plan that checks everything first, then rows in a stream, then one rename."""
+
+from __future__ import annotations
+
+import errno
+import sqlite3
+import sys
+from collections import Counter
+from collections.abc import Callable, Iterable, Iterator
+from dataclasses import dataclass
+from itertools import chain
+from pathlib import Path
+
+import pyarrow as pa
+
+from geoshape.errors import WriteError
+from geoshape.layers.csv_writer import write_csv
+from geoshape.layers.formats import CSV, GEOPACKAGE, GEOPARQUET, SHAPEFILE
+from geoshape.layers.lineage import Lineage, lineage_path, store_in_geopackage
+from geoshape.layers.parquet_writer import write_parquet
+from geoshape.layers.plan import LayerContent, OutputPlan, plan_output
+from geoshape.layers.shapefile import CROSSWALK_SUFFIX, declare_numbers, write_crosswalk
+from geoshape.layers.shapes import ShapeFit, written_type
+from geoshape.layers.staging import copy_database, publish, staged
+from geoshape.layers.storage import Losses, is_dbf_number, loss_texts, stored_arrays, stored_schema
+from geoshape.layers.vector_reader import one_line
+from geoshape.layers.vector_writer import write_vector
+from geoshape.layers.wkb import GeometryType
+
+__all__ = ["LayerContent", "OutputBatch", "OutputPlan", "OutputResult", "plan_output", "write_batches"]
+
+LineageSource = Lineage | Callable[[], Lineage]
+
+Failure = (OSError, RuntimeError, ValueError, sqlite3.Error, pa.ArrowException)
+
+
+@dataclass(frozen=True, eq=False)
+class OutputBatch:
+    """Rows to write, in the order in which they stand in the output.
+
+    Attributes
+    ----------
+    attributes : pyarrow.RecordBatch, (n,)
+        In the plan's schema: attributes, then columns.
+    geometry : pyarrow.BinaryArray, (n,)
+        Well-known binary in the plan's CRS; null where missing.
+    """
+
+    attributes: pa.RecordBatch
+    geometry: pa.BinaryArray
+
+
+@dataclass(frozen=True)
+class OutputResult:
+    """What was written.
+
+    Attributes
+    ----------
+    path : str
+        The output; ``-`` for standard output.
+    rows : int
+        Rows written.
+    extra_files : tuple of str
+        Files of ours beside it: a lineage, a table of short names. A shapefile's own parts are not among them.
+    warnings : tuple of str
+        What the format changed or could not hold.
+    """
+
+    path: str
+    rows: int
+    extra_files: tuple[str, ...]
+    warnings: tuple[str, ...]
+
+
+class _Producer:
+    """Batches from the caller, counted; remembers what they raised, since writers lose it on their way back."""
+
+    def __init__(self, batches: Iterable[OutputBatch]) -> None:
+        self._batches = batches
+        self.rows = 0
+        self.error: BaseException | None = None
+
+    def __iter__(self) -> Iterator[OutputBatch]:
+        try:
+            for batch in self._batches:
+                self.rows += len(batch.geometry)
+                yield batch
+        except GeneratorExit:
+            raise
+        except BaseException as error:
+            self.error = error
+            raise
+
+
+def write_batches(
+    plan: OutputPlan, batches: Iterable[OutputBatch], lineage: LineageSource | None = None
+) -> OutputResult:
+    """Write a layer as its rows come.
+
+    Everything is made in a folder beside the target, ``.geoshape-<name>-<process>``, and moved in place when it is
+    whole; whatever goes wrong, what was there before stays as it was.
+
+    Parameters
+    ----------
+    plan : OutputPlan
+        From `plan_output`.
+    batches : iterable of OutputBatch
+        Taken one by one; what it raises comes back as it is.
+    lineage : Lineage or callable, optional
+        Where the result comes from; a callable is asked after the last batch, when the counts are known. It goes
+        into a GeoPackage or GeoParquet, else into ``<target>.lineage.json``; standard output has none.
+
+    Returns
+    -------
+    OutputResult
+
+    Raises
+    ------
+    WriteError
+        The disk is full, or the format refuses something.
+    """
+    producer = _Producer(batches)
+    losses: Losses = Counter()
+    try:
+        if plan.path is None:
+            _write_csv(plan, producer, losses, None)
+            sys.stdout.flush()
+            return OutputResult(plan.target, producer.rows, (), (*plan.warnings, *loss_texts(losses)))
+        with staged(plan.path) as folder:
+            complaints = _make(plan, producer, losses, folder, lineage)
+            names = [entry.name for entry in folder.iterdir()]
+            publish(folder, plan.path, names)
+    except Failure as error:
+        if producer.error is not None:
+            raise producer.error from None
+        if isinstance(error, BrokenPipeError):
+            raise
+        raise _failure(plan, error) from None
+    beside = {lineage_path(plan.path).name, plan.path.stem + CROSSWALK_SUFFIX}
+    extra = tuple(str(plan.path.with_name(name)) for name in sorted(names) if name in beside)
+    return OutputResult(plan.target, producer.rows, extra, (*plan.warnings, *loss_texts(losses), *complaints))
+
+
+def _failure(plan: OutputPlan, error: BaseException) -> WriteError:
+    text = one_line(error)
+    is_full = getattr(error, "errno", None) == errno.ENOSPC or "No space left" in text or "disk is full" in text
+    if is_full:
+        return WriteError(f"{plan.target}: the disk is full; make room and run again (what was there is untouched)")
+    return WriteError(
+        f"{plan.target}: cannot be written as {plan.format.name} ({text}); what was there is untouched; "
+        "try another format"
+    )
+
+
+def _make(
+    plan: OutputPlan, producer: _Producer, losses: Losses, folder: Path, lineage: LineageSource | None
+) -> tuple[str, ...]:
+    """Make all files of the output in a folder; give what the driver complained of."""
+    assert plan.path is not None
+    made = folder / plan.path.name
+
+    def told() -> str | None:
+        found = lineage() if callable(lineage) else lineage
+        return None if found is None else found.to_json()
+
+    complaints: tuple[str, ...] = ()
+    if plan.format is CSV:
+        _write_csv(plan, producer, losses, made)
+    elif plan.format is GEOPARQUET:
+        schema = stored_schema(plan.schema, plan.written_names, plan.format)
+        rows = ((batch.attributes.columns, batch.geometry) for batch in producer)
+        write_parquet(made, schema, plan.crs_wkt, rows, told)
+    else:
+        complaints = _write_through_gdal(plan, producer, losses, made)
+    _keep_lineage(plan, made, told)
+    return complaints
+
+
+def _keep_lineage(plan: OutputPlan, made: Path, told: Callable[[], str | None]) -> None:
+    if plan.format is GEOPARQUET:
+        return
+    text = told()
+    if text is None:
+        return
+    if plan.format is GEOPACKAGE:
+        store_in_geopackage(made, plan.layer, text)
+    else:
+        lineage_path(made).write_text(text + "\n", encoding="utf-8")
+
+
+def _write_csv(plan: OutputPlan, producer: _Producer, losses: Losses, made: Path | None) -> None:
+    schema = stored_schema(plan.schema, plan.written_names, CSV)
+    rows = (stored_arrays(batch.attributes, schema, CSV, losses) for batch in producer)
+    write_csv(sys.stdout.buffer if made is None else str(made), schema, rows)
+
+
+def _write_through_gdal(plan: OutputPlan, producer: _Producer, losses: Losses, made: Path) -> tuple[str, ...]:
+    assert plan.path is not None
+    if plan.keeps_layers:
+        copy_database(plan.path, made)
+    schema = stored_schema(plan.schema, plan.written_names, plan.format)
+    stream = iter(producer)
+    first = next(stream, None)
+    kind = written_type(GeometryType.parse(plan.geometry_type), plan.format, first.geometry if first else None)
+    fit = ShapeFit(plan.format, kind)
+    whole = chain([] if first is None else [first], stream)
+    rows = (
+        (stored_arrays(batch.attributes, schema, plan.format, losses), fit.fit(batch.geometry, losses))
+        for batch in whole
+    )
+    complaints = write_vector(made, plan, schema, kind, rows)
+    if plan.format is SHAPEFILE:
+        numbers = [i for i, field in enumerate(plan.schema) if is_dbf_number(field.type)]
+        declare_numbers(made.with_suffix(".dbf"), numbers)
+        write_crosswalk(made.with_name(made.stem + CROSSWALK_SUFFIX), plan)
+    return complaints
