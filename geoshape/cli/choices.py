@@ -65,7 +65,7 @@ def _bundle(name: str, build: Callable[[dict[str, Any]], object], *parameters: D
         keys = [
             str(parameter.name)
             for parameter in gathered.__click_params__  # type: ignore[attr-defined]
-            if parameter.name not in before
+            if parameter.name not in before and parameter.expose_value
         ]
         return gathered
 
