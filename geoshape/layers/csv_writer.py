@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterable
-from typing import IO, Any
+from typing import IO
 
 import pyarrow as pa
 import pyarrow.csv as pa_csv
@@ -24,12 +24,8 @@ def write_csv(sink: str | IO[bytes], schema: pa.Schema, rows: Iterable[list[pa.A
     OSError
         The sink takes no more.
     """
-    options: dict[str, Any] = {"write_options": pa_csv.WriteOptions(quoting_style="needed")}
-    with pa_csv.CSVWriter(sink, pa.schema([pa.field(field.name, field.type) for field in schema]), **options) as writer:
+    plain = pa.schema([pa.field(field.name, field.type) for field in schema])
+    options = pa_csv.WriteOptions(quoting_style="needed")
+    with pa_csv.CSVWriter(sink, plain, write_options=options) as writer:
         for arrays in rows:
-            writer.write_batch(pa.RecordBatch.from_arrays(arrays, schema=writer_schema(schema)))
-
-
-def writer_schema(schema: pa.Schema) -> pa.Schema:
-    """Give a schema without the comments on its fields."""
-    return pa.schema([pa.field(field.name, field.type) for field in schema])
+            writer.write_batch(pa.RecordBatch.from_arrays(arrays, schema=plain))

@@ -89,7 +89,9 @@ def check_where(path: str, schema: pa.Schema, where: str) -> None:
     except Failure as error:
         text = one_line(error).split(" Occurred around", maxsplit=1)[0]
         fields = ", ".join(schema.names)
-        raise ReadError(f"{path}: --where {where!r} cannot be used ({text}); the layer's columns are: {fields}") from None
+        raise ReadError(
+            f"{path}: --where {where!r} cannot be used ({text}); the layer's columns are: {fields}"
+        ) from None
 
 
 def meets_box(geometry: pa.BinaryArray, bbox: Bounds) -> BoolArray:

@@ -26,8 +26,8 @@ class Format:
         Whether the layer may be called otherwise than the file.
     max_columns : int or None
         Attributes it can hold; None where there is no bound to speak of.
-    max_name_bytes : int or None
-        Length of a column's name in UTF-8; None where there is no bound.
+    has_short_names : bool
+        Whether names are bound to ten bytes.
     ignores_case : bool
         Whether names that differ in case only are the same name.
     holds_lineage : bool
@@ -41,7 +41,7 @@ class Format:
     extensions: tuple[str, ...]
     names_layers: bool = False
     max_columns: int | None = None
-    max_name_bytes: int | None = None
+    has_short_names: bool = False
     ignores_case: bool = False
     holds_lineage: bool = False
     has_geometry: bool = True
@@ -52,9 +52,7 @@ GEOPACKAGE = Format(
 )
 GEOPARQUET = Format("GeoParquet", None, (".parquet", ".geoparquet"), holds_lineage=True)
 FLATGEOBUF = Format("FlatGeobuf", "FlatGeobuf", (".fgb",), names_layers=True)
-SHAPEFILE = Format(
-    "Shapefile", "ESRI Shapefile", (".shp",), max_columns=255, max_name_bytes=10, ignores_case=True
-)
+SHAPEFILE = Format("Shapefile", "ESRI Shapefile", (".shp",), max_columns=255, has_short_names=True, ignores_case=True)
 GEOJSON = Format("GeoJSON", "GeoJSON", (".geojson", ".json"), names_layers=True)
 GEOJSON_SEQ = Format("GeoJSON text sequence", "GeoJSONSeq", (".geojsonl", ".geojsons", ".ndjson"))
 CSV = Format("CSV", None, (".csv",), has_geometry=False)

@@ -249,6 +249,4 @@ def _read_beside(path: Path, layer: str | None) -> str | None:
     return beside.read_text(encoding="utf-8") if beside.is_file() else None
 
 
-_READERS = {suffix: _read_geopackage for suffix in GEOPACKAGE.extensions} | {
-    suffix: _read_parquet for suffix in GEOPARQUET.extensions
-}
+_READERS = dict.fromkeys(GEOPACKAGE.extensions, _read_geopackage) | dict.fromkeys(GEOPARQUET.extensions, _read_parquet)

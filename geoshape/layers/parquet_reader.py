@@ -212,9 +212,7 @@ def _may_meet(group: Any, covering: dict[str, list[str]], bbox: Bounds) -> bool:
     x_min, y_min, x_max, y_max = (found[side] for side in ("xmin", "ymin", "xmax", "ymax"))
     if x_min is None or y_min is None or x_max is None or y_max is None:
         return True
-    return bool(
-        x_min.min <= bbox[2] and x_max.max >= bbox[0] and y_min.min <= bbox[3] and y_max.max >= bbox[1]
-    )
+    return bool(x_min.min <= bbox[2] and x_max.max >= bbox[0] and y_min.min <= bbox[3] and y_max.max >= bbox[1])
 
 
 def stream(info: LayerInfo) -> Iterator[Rows]:
@@ -289,12 +287,12 @@ def _native_wkb(geometry: pa.Array, encoding: str) -> pa.BinaryArray:
     axes = [level.field(axis).to_numpy(zero_copy_only=False) for axis in ("x", "y", "z") if _has_axis(level.type, axis)]
     shapes = shapely.from_ragged_array(_NATIVE[encoding], np.stack(axes, axis=1), tuple(reversed(offsets)))
     wkb = np.full(len(geometry), None, dtype=object)
-    wkb[is_valid] = shapely.to_wkb(shapes, output_dimension=len(axes))
+    wkb[is_valid] = shapely.to_wkb(shapes, output_dimension=3, flavor="iso")
     return pa.array(wkb, pa.binary())
 
 
 def _has_axis(kind: pa.StructType, axis: str) -> bool:
-    return kind.get_field_index(axis) >= 0
+    return bool(kind.get_field_index(axis) >= 0)
 
 
 def _nested(kind: pa.DataType) -> pa.DataType:

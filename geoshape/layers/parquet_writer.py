@@ -123,9 +123,7 @@ def _write_group(writer: pq.ParquetWriter, pending: list[pa.RecordBatch]) -> Non
     writer.write_table(table, row_group_size=max(table.num_rows, 1))
 
 
-def _with_boxes(
-    arrays: list[pa.Array], geometry: pa.BinaryArray, stored: pa.Schema, extent: _Extent
-) -> pa.RecordBatch:
+def _with_boxes(arrays: list[pa.Array], geometry: pa.BinaryArray, stored: pa.Schema, extent: _Extent) -> pa.RecordBatch:
     shapes = shapely.from_wkb(np.asarray(geometry.to_numpy(zero_copy_only=False), dtype=object), on_invalid="ignore")
     boxes = shapely.bounds(shapes)
     extent.add(geometry, shapes, boxes)

@@ -11,7 +11,7 @@ import pyarrow as pa
 import pyogrio
 import pyproj
 
-from geoshape.columns import Column
+from geoshape.columns import SHORT_NAME_LENGTH, Column
 from geoshape.errors import ColumnNameError, WriteError
 from geoshape.layers.formats import (
     FLATGEOBUF,
@@ -241,7 +241,7 @@ def _written_names(target: str, form: Format, content: LayerContent) -> tuple[st
             f"{target}: {count} columns, but {form.name} holds {form.max_columns}; "
             "choose fewer --families, or write .gpkg or .parquet"
         )
-    if form.max_name_bytes is not None:
+    if form.has_short_names:
         return tuple(short_names(existing, content.columns).values())
     if form.ignores_case:
         check_case(existing, form.name)
@@ -259,9 +259,11 @@ def _warnings(form: Format, content: LayerContent) -> list[str]:
     if kind.has_m and form in {*_RFC7946, FLATGEOBUF}:
         texts.append(f"{form.name} has no room for measures (M); they are left out")
     if form is SHAPEFILE:
-        cut = [name for name in content.schema.names if len(name.encode()) > SHAPEFILE.max_name_bytes]
+        cut = [name for name in content.schema.names if len(name.encode()) > SHORT_NAME_LENGTH]
         if cut:
-            texts.append(f"column names are shortened to 10 characters, {', '.join(cut)} among them")
+            texts.append(
+                f"names of {', '.join(cut)} are cut to {SHORT_NAME_LENGTH} characters; the file beside says how"
+            )
     return texts
 
 

@@ -10,7 +10,6 @@ from geoshape.layers.plan import OutputPlan
 from geoshape.layers.wkb import MULTI_POLYGON, GeometryType
 
 CROSSWALK_SUFFIX = ".columns.csv"
-SIDECARS = (".shx", ".dbf", ".prj", ".cpg")
 
 # dBase III header: 32 bytes, then 32 bytes a field with its type in byte 11 and its decimals in byte 17.
 _HEADER_BYTES = 32
@@ -68,5 +67,7 @@ def write_crosswalk(path: Path, plan: OutputPlan) -> None:
         writer.writerow(["name", "short_name", "unit", "meaning", "source"])
         for name, short in zip(plan.schema.names, plan.written_names, strict=True):
             column = described.get(name)
-            rest = ("", "attribute of the input", "") if column is None else (column.unit, column.meaning, column.source)
+            rest = (
+                ("", "attribute of the input", "") if column is None else (column.unit, column.meaning, column.source)
+            )
             writer.writerow([name, short, *rest])

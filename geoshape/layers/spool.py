@@ -7,6 +7,7 @@ import tempfile
 from collections.abc import Iterator, Sequence
 from pathlib import Path
 from types import TracebackType
+from typing import Self
 
 import pyarrow as pa
 
@@ -53,7 +54,7 @@ class Spool:
         except OSError as error:
             raise WriteError(f"no temporary file can be made ({error}); set TMPDIR to a folder with room") from None
 
-    def __enter__(self) -> Spool:
+    def __enter__(self) -> Self:
         return self
 
     def __exit__(

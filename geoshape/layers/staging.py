@@ -15,11 +15,8 @@ from geoshape.errors import WriteError
 
 _PREFIX = ".geoshape-"
 _STALE_SECONDS = 86_400.0
-# Files of an older shapefile or GeoPackage that would be wrong beside a new one.
-_SIDECARS = {
-    ".shp": (".shx", ".dbf", ".prj", ".cpg", ".qix", ".sbn", ".sbx", ".fbn", ".fbx", ".ain", ".aih", ".atx", ".ixs")
-    + (".mxs", ".shp.xml"),
-}
+# Parts of a shapefile besides itself: an older one's index, say, would be wrong beside a new one.
+_SHAPEFILE_PARTS = (".shx", ".dbf", ".prj", ".cpg", ".qix", ".sbn", ".sbx", ".fbn", ".fbx", ".ain", ".aih", ".shp.xml")
 _JOURNALS = ("-wal", "-shm", "-journal")
 
 
@@ -89,32 +86,55 @@ def _is_abandoned(pid: int, folder: Path) -> bool:
     return False
 
 
-def publish(folder: Path, target: Path, names: Sequence[str]) -> None:
+def publish(folder: Path, target: Path, stale: Sequence[Path]) -> list[str]:
     """Move finished files from the staging folder to the target's, the target itself last.
 
     Parameters
     ----------
     folder : Path
+        Holds the target, under its name, and what belongs to it.
     target : Path
-    names : sequence of str
-        Files in the folder; the target's name must be among them.
+    stale : sequence of Path
+        Files of an older output that would be wrong beside the new one; those that are written anew stay.
+
+    Returns
+    -------
+    list of str
+        Names of the files moved, sorted.
 
     Raises
     ------
     OSError
         A file cannot be moved.
     """
-    for stale in _stale(target, names):
-        with suppress(FileNotFoundError):
-            stale.unlink()
+    names = sorted(entry.name for entry in folder.iterdir())
+    if target.suffix.lower() == ".gpkg":
+        _settle_journal(target)
     for name in sorted(names, key=lambda name: name == target.name):
         (folder / name).replace(target.parent / name)
+    for path in [*stale, *_old_parts(target)]:
+        if path.name not in names:
+            with suppress(FileNotFoundError):
+                path.unlink()
+    return names
 
 
-def _stale(target: Path, names: Sequence[str]) -> list[Path]:
-    sidecars = [target.with_suffix(ending) for ending in _SIDECARS.get(target.suffix.lower(), ())]
-    journals = [target.with_name(target.name + ending) for ending in _JOURNALS if target.suffix.lower() == ".gpkg"]
-    return [path for path in [*sidecars, *journals] if path.name not in names]
+def _old_parts(target: Path) -> list[Path]:
+    match target.suffix.lower():
+        case ".shp":
+            return [target.with_suffix(ending) for ending in _SHAPEFILE_PARTS]
+        case ".gpkg":
+            return [target.with_name(target.name + ending) for ending in _JOURNALS]
+        case _:
+            return []
+
+
+def _settle_journal(target: Path) -> None:
+    """Bring changes that wait in a journal into their file, lest they be replayed into the one that replaces it."""
+    if not target.with_name(target.name + _JOURNALS[0]).exists():
+        return
+    with suppress(sqlite3.Error), closing(sqlite3.connect(target)) as connection:
+        connection.execute("PRAGMA wal_checkpoint(TRUNCATE)")
 
 
 def copy_database(source: Path, copy: Path) -> None:

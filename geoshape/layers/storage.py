@@ -28,7 +28,7 @@ Losses = Counter[str]
 
 def is_dbf_number(kind: pa.DataType) -> bool:
     """Whether a shapefile's numbers of this type are written as text of full precision and declared numbers after."""
-    return pt.is_floating(kind) or pt.is_decimal(kind)
+    return bool(pt.is_floating(kind) or pt.is_decimal(kind))
 
 
 def stored_schema(schema: pa.Schema, names: Sequence[str], form: Format) -> pa.Schema:
@@ -67,7 +67,7 @@ def _is_simple_list(kind: pa.DataType) -> bool:
     if not pt.is_list(kind):
         return False
     value = kind.value_type
-    return pt.is_boolean(value) or pt.is_integer(value) or pt.is_floating(value) or pt.is_string(value)
+    return bool(pt.is_boolean(value) or pt.is_integer(value) or pt.is_floating(value) or pt.is_string(value))
 
 
 def _stored_type(kind: pa.DataType, form: Format) -> pa.DataType:

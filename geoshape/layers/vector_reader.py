@@ -6,7 +6,7 @@ import warnings
 from collections.abc import Iterator
 from contextlib import contextmanager
 from pathlib import Path
-from typing import Any
+from typing import Any, Self
 
 import pyarrow as pa
 import pyogrio
@@ -198,7 +198,9 @@ def _check_where(path: str, source: str, info: dict[str, Any], where: str) -> No
         text = one_line(error)
         text = text.split(" Occurred around", maxsplit=1)[0]
         fields = ", ".join(map(str, info["fields"]))
-        raise ReadError(f"{path}: --where {where!r} cannot be used ({text}); the layer's columns are: {fields}") from None
+        raise ReadError(
+            f"{path}: --where {where!r} cannot be used ({text}); the layer's columns are: {fields}"
+        ) from None
 
 
 def stream(info: LayerInfo) -> Iterator[Rows]:
@@ -233,7 +235,7 @@ class _Reader:
         self._info = info
         self.geometry_name = _DEFAULT_GEOMETRY_NAME
 
-    def __enter__(self) -> _Reader:
+    def __enter__(self) -> Self:
         info = self._info
         self._context = open_arrow(
             info.source,

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from typing import Literal
 
 import numpy as np
 import pyarrow as pa
@@ -212,7 +213,7 @@ def promoted(geometry: pa.BinaryArray, multi: str) -> pa.BinaryArray:
     for swapped, has_z, has_m in np.unique(kinds, axis=0):
         chosen = is_simple & (head.is_swapped == swapped) & (head.has_z == has_z) & (head.has_m == has_m)
         code = TYPE_CODES[multi] + 1000 * int(has_z) + 2000 * int(has_m)
-        order = "big" if swapped else "little"
+        order: Literal["big", "little"] = "big" if swapped else "little"
         prefix = bytes([0 if swapped else _LITTLE_ENDIAN]) + code.to_bytes(4, order) + (1).to_bytes(_COUNT_BYTES, order)
         joined = pc.binary_join_element_wise(pa.scalar(prefix, pa.binary()), geometry, pa.scalar(b"", pa.binary()))
         geometry = pc.if_else(pa.array(chosen), joined, geometry)

@@ -31,6 +31,8 @@ __all__ = ["LayerContent", "OutputBatch", "OutputPlan", "OutputResult", "plan_ou
 
 LineageSource = Lineage | Callable[[], Lineage]
 
+_FULL_DISK = ("No space left", "disk is full", "disk full")
+
 Failure = (OSError, RuntimeError, ValueError, sqlite3.Error, pa.ArrowException)
 
 
@@ -63,7 +65,7 @@ class OutputResult:
     extra_files : tuple of str
         Files of ours beside it: a lineage, a table of short names. A shapefile's own parts are not among them.
     warnings : tuple of str
-        What the format changed or could not hold.
+        What the format could not hold, beyond what the plan warned of.
     """
 
     path: str
@@ -125,61 +127,68 @@ def write_batches(
         if plan.path is None:
             _write_csv(plan, producer, losses, None)
             sys.stdout.flush()
-            return OutputResult(plan.target, producer.rows, (), (*plan.warnings, *loss_texts(losses)))
-        with staged(plan.path) as folder:
-            complaints = _make(plan, producer, losses, folder, lineage)
-            names = [entry.name for entry in folder.iterdir()]
-            publish(folder, plan.path, names)
+            return OutputResult(plan.target, producer.rows, (), loss_texts(losses))
+        told = _Told(lineage)
+        extra, complaints = _write_file(plan, plan.path, producer, losses, told)
     except Failure as error:
         if producer.error is not None:
             raise producer.error from None
         if isinstance(error, BrokenPipeError):
             raise
         raise _failure(plan, error) from None
-    beside = {lineage_path(plan.path).name, plan.path.stem + CROSSWALK_SUFFIX}
-    extra = tuple(str(plan.path.with_name(name)) for name in sorted(names) if name in beside)
-    return OutputResult(plan.target, producer.rows, extra, (*plan.warnings, *loss_texts(losses), *complaints))
+    return OutputResult(plan.target, producer.rows, extra, (*loss_texts(losses), *complaints))
 
 
 def _failure(plan: OutputPlan, error: BaseException) -> WriteError:
     text = one_line(error)
-    is_full = getattr(error, "errno", None) == errno.ENOSPC or "No space left" in text or "disk is full" in text
+    is_full = getattr(error, "errno", None) == errno.ENOSPC or any(sign in text for sign in _FULL_DISK)
     if is_full:
         return WriteError(f"{plan.target}: the disk is full; make room and run again (what was there is untouched)")
     return WriteError(
-        f"{plan.target}: cannot be written as {plan.format.name} ({text}); what was there is untouched; "
-        "try another format"
+        f"{plan.target}: cannot be written as {plan.format.name} ({text}); try another format "
+        "(what was there is untouched)"
     )
 
 
-def _make(
-    plan: OutputPlan, producer: _Producer, losses: Losses, folder: Path, lineage: LineageSource | None
-) -> tuple[str, ...]:
-    """Make all files of the output in a folder; give what the driver complained of."""
-    assert plan.path is not None
-    made = folder / plan.path.name
+class _Told:
+    """The lineage as JSON, asked for once all rows are written."""
 
-    def told() -> str | None:
-        found = lineage() if callable(lineage) else lineage
+    def __init__(self, source: LineageSource | None) -> None:
+        self._source = source
+
+    def __call__(self) -> str | None:
+        found = self._source() if callable(self._source) else self._source
         return None if found is None else found.to_json()
 
+
+def _write_file(
+    plan: OutputPlan, path: Path, producer: _Producer, losses: Losses, told: _Told
+) -> tuple[tuple[str, ...], tuple[str, ...]]:
+    """Make the output beside its target and move it there; give files of ours and the driver's complaints."""
     complaints: tuple[str, ...] = ()
-    if plan.format is CSV:
-        _write_csv(plan, producer, losses, made)
-    elif plan.format is GEOPARQUET:
-        schema = stored_schema(plan.schema, plan.written_names, plan.format)
-        rows = ((batch.attributes.columns, batch.geometry) for batch in producer)
-        write_parquet(made, schema, plan.crs_wkt, rows, told)
-    else:
-        complaints = _write_through_gdal(plan, producer, losses, made)
-    _keep_lineage(plan, made, told)
-    return complaints
+    crosswalk = path.with_name(path.stem + CROSSWALK_SUFFIX)
+    beside = [lineage_path(path), *([crosswalk] if plan.format is SHAPEFILE else [])]
+    with staged(path) as folder:
+        made = folder / path.name
+        if plan.format is CSV:
+            _write_csv(plan, producer, losses, made)
+        elif plan.format is GEOPARQUET:
+            schema = stored_schema(plan.schema, plan.written_names, plan.format)
+            rows = ((batch.attributes.columns, batch.geometry) for batch in producer)
+            write_parquet(made, schema, plan.crs_wkt, rows, told)
+        else:
+            if plan.keeps_layers:
+                copy_database(path, made)
+            complaints = _write_through_gdal(plan, producer, losses, made)
+        if plan.format is SHAPEFILE:
+            write_crosswalk(folder / crosswalk.name, plan)
+        if plan.format is not GEOPARQUET:
+            _keep_lineage(plan, made, told())
+        names = publish(folder, path, beside)
+    return tuple(str(file) for file in beside if file.name in names), complaints
 
 
-def _keep_lineage(plan: OutputPlan, made: Path, told: Callable[[], str | None]) -> None:
-    if plan.format is GEOPARQUET:
-        return
-    text = told()
+def _keep_lineage(plan: OutputPlan, made: Path, text: str | None) -> None:
     if text is None:
         return
     if plan.format is GEOPACKAGE:
@@ -195,9 +204,6 @@ def _write_csv(plan: OutputPlan, producer: _Producer, losses: Losses, made: Path
 
 
 def _write_through_gdal(plan: OutputPlan, producer: _Producer, losses: Losses, made: Path) -> tuple[str, ...]:
-    assert plan.path is not None
-    if plan.keeps_layers:
-        copy_database(plan.path, made)
     schema = stored_schema(plan.schema, plan.written_names, plan.format)
     stream = iter(producer)
     first = next(stream, None)
@@ -212,5 +218,4 @@ def _write_through_gdal(plan: OutputPlan, producer: _Producer, losses: Losses, m
     if plan.format is SHAPEFILE:
         numbers = [i for i, field in enumerate(plan.schema) if is_dbf_number(field.type)]
         declare_numbers(made.with_suffix(".dbf"), numbers)
-        write_crosswalk(made.with_name(made.stem + CROSSWALK_SUFFIX), plan)
     return complaints
