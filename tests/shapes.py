@@ -261,7 +261,7 @@ QUAD = Shape(
     "quad",
     [[[(0, 0), (5, 0), (4, 3), (1, 2)]]],
     {
-        "area_m2": 9,
+        "area_m2": 10,
         "hu_1": Fraction(7, 36),
         "hu_2": Fraction(5, 648),
         "hu_3": Fraction(2621, 1866240),
