@@ -11,9 +11,8 @@ import pyarrow.types as pt
 import shapely
 from pyogrio.raw import read_arrow, write_arrow
 
-from geoshape.errors import ReadError
 from geoshape.layers.layer import Bounds
-from geoshape.layers.vector_reader import Failure, one_line, quiet
+from geoshape.layers.vector_reader import Failure, quiet, where_error
 from geoshape.rings import BoolArray
 
 _ROW = "geoshape_row_number"
@@ -87,11 +86,7 @@ def check_where(path: str, schema: pa.Schema, where: str) -> None:
             data.seek(0)
             read_arrow(data, where=where)
     except Failure as error:
-        text = one_line(error).split(" Occurred around", maxsplit=1)[0]
-        fields = ", ".join(schema.names)
-        raise ReadError(
-            f"{path}: --where {where!r} cannot be used ({text}); the layer's columns are: {fields}"
-        ) from None
+        raise where_error(path, where, error, schema.names) from None
 
 
 def meets_box(geometry: pa.BinaryArray, bbox: Bounds) -> BoolArray:

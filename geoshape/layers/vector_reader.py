@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import warnings
-from collections.abc import Iterator
+from collections.abc import Iterable, Iterator
 from contextlib import contextmanager
 from pathlib import Path
 from typing import Any, Self
@@ -63,7 +63,11 @@ def quiet() -> Iterator[list[str]]:
 
 def _open_failure(path: str, error: BaseException) -> ReadError:
     text = one_line(error)
-    if "not recognized as being in a supported file format" in text or "not recognized as a supported" in text:
+    if "does not exist in the file system" in text:
+        return ReadError(f"{path}: there is no such file; check the path")
+    if "not recognized as being in a supported file format" in text:
+        if Path(path).is_dir():
+            return ReadError(f"{path}: is a folder that GDAL does not take for a layer; name a file in it")
         return ReadError(f"{path}: no format that GDAL reads as a layer; check that the file is a vector layer")
     return ReadError(f"{path}: cannot be opened ({text}); check that the file is whole and not in use")
 
@@ -126,7 +130,7 @@ def describe(path: str, source: str, layer: str, where: str | None, bbox: Bounds
         except Failure as error:
             raise _open_failure(path, error) from None
         if info["geometry_type"] is None:
-            raise ReadError(f"{path}: layer {layer!r} has no geometry column; name another layer with --layer")
+            raise ReadError(f"{path}: layer {layer!r} has no geometry column; name a layer that has one")
         if where is not None:
             _check_where(path, source, info, where)
         try:
@@ -184,23 +188,35 @@ def _rows_per_read(source: str, features: int) -> int:
 def _check_where(path: str, source: str, info: dict[str, Any], where: str) -> None:
     """Let GDAL judge a condition without reading the layer."""
     layer = info["layer_name"]
-    never = f"({where}\n) AND 1 = 0"
     try:
         if info["driver"] in _SQL_DRIVERS:
-            with open_arrow(source, layer=layer, where=never, use_pyarrow=True, batch_size=1) as (_, reader):
-                reader.read_all()
+            _try_in_database(source, layer, where)
             return
         name = layer.replace('"', '""')
         sql = f'SELECT * FROM "{name}" WHERE {where}'  # noqa: S608
         with open_arrow(source, sql=sql, sql_dialect="OGRSQL", use_pyarrow=True, batch_size=1):
             return
     except Failure as error:
-        text = one_line(error)
-        text = text.split(" Occurred around", maxsplit=1)[0]
-        fields = ", ".join(map(str, info["fields"]))
-        raise ReadError(
-            f"{path}: --where {where!r} cannot be used ({text}); the layer's columns are: {fields}"
-        ) from None
+        raise where_error(path, where, error, map(str, info["fields"])) from None
+
+
+def where_error(path: str, where: str, error: BaseException, fields: Iterable[str]) -> ReadError:
+    """Say why a condition cannot be used, and what it could name."""
+    text = one_line(one_line(error).split(" Occurred around", maxsplit=1)[0])
+    return ReadError(f"{path}: --where {where!r} cannot be used ({text}); the layer's columns are: {', '.join(fields)}")
+
+
+def _try_in_database(source: str, layer: str, where: str) -> None:
+    # A database looks at every row until one fits, unless it is told that none can.
+    for condition in (f"({where}\n) AND 1 = 0", where):
+        try:
+            with open_arrow(source, layer=layer, where=condition, use_pyarrow=True, batch_size=1) as (_, reader):
+                next(reader, None)
+                return
+        except Failure:
+            # Without the brackets the database speaks of what the user wrote.
+            if condition == where:
+                raise
 
 
 def stream(info: LayerInfo) -> Iterator[Rows]:
@@ -226,6 +242,24 @@ def stream(info: LayerInfo) -> Iterator[Rows]:
             attributes, geometry = _plain_rows(batch, reader.geometry_name, info.schema)
             done += len(geometry)
             yield attributes, geometry
+    if info.driver in _BROKEN_NULLS:
+        _check_end(info, done)
+
+
+def _check_end(info: LayerInfo, done: int) -> None:
+    """Find out whether the file was whole, where the stream does not tell."""
+    if info.row_count is not None:
+        is_whole = done >= info.row_count
+    else:
+        # The reader that loses track of nulls does notice the end.
+        with quiet():
+            try:
+                with open_arrow(info.source, layer=info.layer, use_pyarrow=True) as (_, reader):
+                    is_whole = all(batch.num_rows for batch in reader)
+            except Failure:
+                is_whole = False
+    if not is_whole:
+        raise ReadError(f"{info.path}: the file is cut off; fetch or copy it again")
 
 
 class _Reader:
