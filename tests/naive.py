@@ -65,28 +65,28 @@ def outline_length(parts):
 # integral of l1^a l2^b l3^c over a triangle T = 2 |T| a! b! c! / (a + b + c + 2)!
 
 
-def _expanded(coordinates, power):
-    """Expand (l1 x1 + l2 x2 + l3 x3)^power: a dict of exponents of l to coefficients."""
-    terms = {(0, 0, 0): Fraction(1)}
+def _expanded(values, power):
+    """Expand (l1 v1 + l2 v2 + l3 v3)^power: a dict of exponents of l to coefficients."""
+    terms = {(0, 0, 0): 1}
     for _ in range(power):
         grown = {}
         for exponents, factor in terms.items():
             for i in range(3):
                 key = tuple(e + (i == j) for j, e in enumerate(exponents))
-                grown[key] = grown.get(key, 0) + factor * coordinates[i]
+                grown[key] = grown.get(key, 0) + factor * values[i]
         terms = grown
     return terms
 
 
-def triangle_moment(a, b, c, p, q):
-    """Integral of x^p y^q over a triangle, negative for one that runs clockwise."""
+def _triangle_moment(a, b, c, p, q):
+    """(p + q + 2)! times the integral of x^p y^q over a triangle, negative for one that runs clockwise."""
     twice_area = (b[0] - a[0]) * (c[1] - a[1]) - (b[1] - a[1]) * (c[0] - a[0])
-    total = Fraction(0)
+    total = 0
     in_x, in_y = _expanded((a[0], b[0], c[0]), p), _expanded((a[1], b[1], c[1]), q)
     for (ex, fx), (ey, fy) in product(in_x.items(), in_y.items()):
         i, j, k = (m + n for m, n in zip(ex, ey, strict=True))
-        total += fx * fy * Fraction(math.factorial(i) * math.factorial(j) * math.factorial(k))
-    return total * twice_area / math.factorial(p + q + 2)
+        total += fx * fy * math.factorial(i) * math.factorial(j) * math.factorial(k)
+    return total * twice_area
 
 
 def moment(parts, p, q, about=(0, 0)):
@@ -96,9 +96,13 @@ def moment(parts, p, q, about=(0, 0)):
     for part in parts:
         for number, ring in enumerate(part):
             moved = [(x - x0, y - y0) for x, y in exact(ring)]
-            fan = sum((triangle_moment(moved[0], b, c, p, q) for b, c in pairwise(moved[1:])), Fraction(0))
+            # Whole numbers over one denominator: the same as rational numbers, only quicker.
+            below = math.lcm(*(value.denominator for point in moved for value in point))
+            whole = [(int(x * below), int(y * below)) for x, y in moved]
+            fan = sum(_triangle_moment(whole[0], b, c, p, q) for b, c in pairwise(whole[1:]))
             sense = 1 if signed_area(ring) > 0 else -1
-            total += fan * sense * (1 if number == 0 else -1)
+            sign = sense if number == 0 else -sense
+            total += Fraction(sign * fan, below ** (p + q + 2) * math.factorial(p + q + 2))
     return total
 
 
@@ -171,18 +175,19 @@ def hu_invariants(mu):
 def _contraction(mu, tensors, crosses):
     """Sum over all indices the product of moment tensors and of one permutation symbol for each pair in `crosses`.
 
-    `tensors` names the indices of each moment tensor by letters, `crosses` pairs the letters.
+    `tensors` names the indices of each moment tensor by letters, `crosses` pairs the letters. The symbol is 1 for the
+    indices (x, y), -1 for (y, x) and 0 for equal ones.
     """
-    letters = sorted(set("".join(tensors)))
     total = Fraction(0)
-    for values in product((0, 1), repeat=len(letters)):
-        at = dict(zip(letters, values, strict=True))
-        term = Fraction(math.prod(at[b] - at[a] for a, b in crosses))
-        if term:
-            for names in tensors:
-                along_y = sum(at[name] for name in names)
-                term *= mu[len(names) - along_y, along_y]
-            total += term
+    for swapped in product((False, True), repeat=len(crosses)):
+        is_y = {}
+        for (a, b), swap in zip(crosses, swapped, strict=True):
+            is_y[a], is_y[b] = swap, not swap
+        term = Fraction((-1) ** sum(swapped))
+        for letters in tensors:
+            along_y = sum(is_y[letter] for letter in letters)
+            term *= mu[len(letters) - along_y, along_y]
+        total += term
     return total
 
 

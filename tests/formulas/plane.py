@@ -14,18 +14,12 @@ FAMILY_LIST = tuple(Family)
 LENGTHS = ["perimeter_m", "outline_m", "edge_mean_m", "feret_max_m", "feret_min_m", "major_axis_m", "minor_axis_m"]
 DIRECTIONS = ["feret_max_azimuth_deg", "axis_azimuth_deg"]
 
-ZERO_SCALE = {
-    # What hu_1 to the power given is an upper bound of, up to a small factor: rounding is relative to that where
-    # symmetry makes an invariant vanish.
-    "hu_2": 2,
-    "hu_3": 3,
-    "hu_4": 3,
-    "hu_5": 6,
-    "hu_6": 4,
-    "hu_7": 6,
-    "affine_2": 6,
-    "affine_3": 4,
-}
+
+def zero_scales(row):
+    """Size of the terms that cancel where symmetry makes an invariant vanish: rounding is relative to that."""
+    second, third = row["hu_1"], max(row["hu_1"] ** 3, row["hu_3"], row["hu_4"])
+    scales = {"hu_2": second**2, "hu_3": third, "hu_4": third, "hu_5": third**2, "hu_6": second * third}
+    return scales | {"hu_7": third**2, "affine_2": third**2, "affine_3": second * third}
 
 
 def objects(*items):
@@ -66,8 +60,8 @@ def central_of(*polygons):
 def tolerance(row, name, relative):
     """Largest difference that rounding explains: relative to the value, or to its scale where it vanishes."""
     scale = abs(row[name])
-    if name in ZERO_SCALE:
-        scale = max(scale, 1e-3 * row["hu_1"] ** ZERO_SCALE[name])
+    if name.startswith(("hu_", "affine_")):
+        scale = max(scale, 1e-3 * zero_scales(row).get(name, 0.0))
     if name.startswith("fd_"):
         # An amplitude may vanish; it is relative to |Z_1|, which is 1.
         scale = max(scale, 1e-3)
