@@ -17,7 +17,6 @@ from geoshape.ground.layer_crs import resolve_crs
 from geoshape.ground.place import Ground, open_ground
 from geoshape.measure import ColumnValues, Measured, measure_geometries
 from geoshape.options import MeasureOptions
-from geoshape.rings import IntArray
 
 MAX_BATCH_VERTICES = 150_000
 
@@ -122,6 +121,6 @@ def _bounds(geometries: ObjectArray) -> tuple[float, float, float, float] | None
 
 def _batches(geometries: ObjectArray) -> list[tuple[int, int]]:
     """Cut rows into runs of at most `MAX_BATCH_VERTICES` vertices, or one row."""
-    block: IntArray = np.cumsum(shapely.get_num_coordinates(geometries)) // MAX_BATCH_VERTICES
+    block = np.cumsum(shapely.get_num_coordinates(geometries)) // MAX_BATCH_VERTICES
     start = np.flatnonzero(np.diff(block, prepend=-1))
     return list(zip(start.tolist(), [*start[1:].tolist(), len(geometries)], strict=True)) if len(block) else []

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 import shapely
@@ -249,7 +250,7 @@ def _polygons_of(geometry: BaseGeometry) -> BaseGeometry:
     """Collect the polygons of a collection, however deep; a polygon stays as it is."""
     if shapely.get_type_id(geometry) in {POLYGON, MULTIPOLYGON}:
         return geometry
-    polygons: list[BaseGeometry] = []
+    polygons: list[Any] = []
     pending = [geometry]
     while pending:
         parts = shapely.get_parts(pending.pop())

@@ -13,7 +13,6 @@ from geoshape.columns import Status
 from geoshape.formulas.arclength import edge_lengths
 from geoshape.formulas.staircase import is_staircase
 from geoshape.geometry import ObjectArray
-from geoshape.ground import seams
 from geoshape.ground.place import Ground
 from geoshape.rings import FloatArray, IntArray
 
@@ -95,6 +94,7 @@ class Inspector:
 
     def add(self, geometries: ObjectArray, unreadable: dict[int, str]) -> None:
         """Look at a batch of geometries, as `geometry.read_wkb` gives them."""
+        geometries = self.ground.in_degrees(geometries)
         is_geographic = self.ground.plan.is_geographic
         polygons, verdicts = geometry.screen(geometries, unreadable, is_geographic=is_geographic)
         counts = geometry.count(polygons, geometries)
@@ -113,12 +113,10 @@ class Inspector:
             staircase=int(np.count_nonzero(is_staircase(geometry.ring_batch(polygons)))),
         )
         self._prints.append(_fingerprints(polygons[there]))
-        self._count_edges(polygons, is_geographic=is_geographic)
+        self._count_edges(polygons)
 
-    def _count_edges(self, polygons: ObjectArray, *, is_geographic: bool) -> None:
-        frames = np.zeros(len(polygons), dtype=np.int64)
-        if is_geographic:
-            polygons, frames, _ = seams.unwrap(polygons)
+    def _count_edges(self, polygons: ObjectArray) -> None:
+        polygons, frames, _ = self.ground.unwrap(polygons)
         placed = self.ground.place(geometry.ring_batch(polygons), frames)
         lengths = edge_lengths(placed.batch)
         lengths = lengths[np.isfinite(lengths) & (lengths > 0)]

@@ -16,8 +16,8 @@ from geoshape.columns import Kind, Status, columns_for
 from geoshape.formulas.arclength import edge_lengths
 from geoshape.formulas.families import FAMILIES, Shapes
 from geoshape.geometry import ObjectArray, Verdicts
-from geoshape.ground import seams
 from geoshape.ground.place import Ground, Placed
+from geoshape.ground.seams import rejoin
 from geoshape.options import Holes, MeasureOptions, Parts
 from geoshape.rings import BoolArray, FloatArray, IntArray, RingBatch
 
@@ -98,16 +98,12 @@ def measure_geometries(
 def _measure_rows(
     geometries: ObjectArray, unreadable: dict[int, str], ground: Ground, options: MeasureOptions, first_row: int
 ) -> dict[str, FloatArray | ObjectArray]:
-    is_geographic = ground.plan.is_geographic
-    polygons, verdicts = geometry.screen(geometries, unreadable, is_geographic=is_geographic)
+    geometries = ground.in_degrees(geometries)
+    polygons, verdicts = geometry.screen(geometries, unreadable, is_geographic=ground.plan.is_geographic)
     counts = geometry.count(polygons, geometries)
-    frames = np.zeros(len(polygons), dtype=np.int64)
-    if is_geographic:
-        polygons, frames, is_cut = seams.unwrap(polygons)
-        polygons = geometry.repair(polygons, verdicts, options.invalid, first_row)
-        polygons = seams.rejoin(polygons, is_cut, frames)
-    else:
-        polygons = geometry.repair(polygons, verdicts, options.invalid, first_row)
+    polygons, frames, is_cut = ground.unwrap(polygons)
+    polygons = geometry.repair(polygons, verdicts, options.invalid, first_row)
+    polygons = rejoin(polygons, is_cut)
     if options.holes is Holes.FILL:
         polygons = geometry.filled(polygons)
     source = geometry.ring_batch(polygons)

@@ -127,6 +127,26 @@ class RingBatch:
         cross = (self.x - x0) * (self.next_y - y0) - (self.next_x - x0) * (self.y - y0)
         return 0.5 * self.sum_rings(cross)
 
+    @cached_property
+    def planar_centroid(self) -> FloatArray:
+        """(n_features, 2) centroid of the area, holes out, relative to the origin; mean of vertices without area."""
+        x0 = np.repeat(self.x[self.ring_start[:-1]], self.ring_size)
+        y0 = np.repeat(self.y[self.ring_start[:-1]], self.ring_size)
+        ax, ay, bx, by = self.x - x0, self.y - y0, self.next_x - x0, self.next_y - y0
+        cross = ax * by - bx * ay
+        ring_area = 0.5 * self.sum_rings(cross)
+        first_x = self.sum_rings(cross * (ax + bx)) / 6.0 + ring_area * self.x[self.ring_start[:-1]]
+        first_y = self.sum_rings(cross * (ay + by)) / 6.0 + ring_area * self.y[self.ring_start[:-1]]
+        area = self.sum_ring_values(ring_area)
+        count = np.maximum(self.sum_ring_values(self.ring_size.astype(np.float64)), 1.0)
+        has_area = area > 0
+        safe_area = np.where(has_area, area, 1.0)
+        centroid = [
+            np.where(has_area, self.sum_ring_values(first) / safe_area, self.sum_features(values) / count)
+            for first, values in ((first_x, self.x), (first_y, self.y))
+        ]
+        return np.column_stack(centroid)
+
     def moved(self, x: FloatArray, y: FloatArray, origin: FloatArray) -> RingBatch:
         """Return the same rings with other coordinates."""
         return replace(self, x=x, y=y, origin=origin)

@@ -60,14 +60,15 @@ def _bundle(name: str, build: Callable[[dict[str, Any]], object], *parameters: D
             return command(**values)
 
         before = {parameter.name for parameter in getattr(command, "__click_params__", [])}
+        decorated: Function = gathered
         for parameter in reversed(parameters):
-            gathered = parameter(gathered)
+            decorated = parameter(decorated)
         keys = [
             str(parameter.name)
-            for parameter in gathered.__click_params__  # type: ignore[attr-defined]
+            for parameter in decorated.__click_params__  # type: ignore[attr-defined]
             if parameter.name not in before and parameter.expose_value
         ]
-        return gathered
+        return decorated
 
     return decorate
 

@@ -61,4 +61,4 @@ def _is_whole(rings: RingBatch, step: FloatArray, chosen: BoolArray) -> BoolArra
     """Tell which chosen steps are whole multiples of the ring's shortest; the others are taken for granted."""
     shortest = np.minimum.reduceat(np.where(chosen, step, np.inf), rings.ring_start[:-1])
     pixels = step / np.repeat(shortest, rings.ring_size)
-    return ~chosen | (np.abs(pixels - np.round(pixels)) <= STEP_TOLERANCE)
+    return np.asarray(~chosen | (np.abs(pixels - np.round(pixels)) <= STEP_TOLERANCE))
