@@ -32,8 +32,8 @@ class Format:
         Whether names that differ in case only are the same name.
     holds_lineage : bool
         Whether lineage goes into the file.
-    has_geometry : bool
-        Whether geometries are written.
+    is_rfc7946 : bool
+        Whether it is a kind of GeoJSON.
     """
 
     name: str
@@ -44,7 +44,7 @@ class Format:
     has_short_names: bool = False
     ignores_case: bool = False
     holds_lineage: bool = False
-    has_geometry: bool = True
+    is_rfc7946: bool = False
 
 
 GEOPACKAGE = Format(
@@ -53,9 +53,9 @@ GEOPACKAGE = Format(
 GEOPARQUET = Format("GeoParquet", None, (".parquet", ".geoparquet"), holds_lineage=True)
 FLATGEOBUF = Format("FlatGeobuf", "FlatGeobuf", (".fgb",), names_layers=True)
 SHAPEFILE = Format("Shapefile", "ESRI Shapefile", (".shp",), max_columns=255, has_short_names=True, ignores_case=True)
-GEOJSON = Format("GeoJSON", "GeoJSON", (".geojson", ".json"), names_layers=True)
-GEOJSON_SEQ = Format("GeoJSON text sequence", "GeoJSONSeq", (".geojsonl", ".geojsons", ".ndjson"))
-CSV = Format("CSV", None, (".csv",), has_geometry=False)
+GEOJSON = Format("GeoJSON", "GeoJSON", (".geojson", ".json"), names_layers=True, is_rfc7946=True)
+GEOJSON_SEQ = Format("GeoJSON text sequence", "GeoJSONSeq", (".geojsonl", ".geojsons", ".ndjson"), is_rfc7946=True)
+CSV = Format("CSV", None, (".csv",))
 
 FORMATS = (GEOPACKAGE, GEOPARQUET, FLATGEOBUF, SHAPEFILE, GEOJSON, GEOJSON_SEQ, CSV)
 

@@ -15,8 +15,6 @@ from geoshape.columns import SHORT_NAME_LENGTH, Column
 from geoshape.errors import ColumnNameError, WriteError
 from geoshape.layers.formats import (
     FLATGEOBUF,
-    GEOJSON,
-    GEOJSON_SEQ,
     GEOPACKAGE,
     SHAPEFILE,
     STDOUT,
@@ -25,6 +23,7 @@ from geoshape.layers.formats import (
 )
 from geoshape.layers.layer import LayerInfo
 from geoshape.layers.names import check_case, check_new_names, short_names
+from geoshape.layers.rfc7946 import is_wgs84
 from geoshape.layers.sources import archive_of, is_virtual
 from geoshape.layers.tables import column_fields
 from geoshape.layers.vector_reader import Failure, quiet
@@ -32,7 +31,6 @@ from geoshape.layers.wkb import MULTI_POLYGON, POLYGON, UNKNOWN, GeometryType
 
 # Drivers that call a layer "Polygon" although a row of it may have several parts.
 _LOOSE_TYPES = frozenset({"ESRI Shapefile", "MapInfo File", "CSV"})
-_RFC7946 = frozenset({GEOJSON, GEOJSON_SEQ})
 
 
 @dataclass(frozen=True)
@@ -254,9 +252,9 @@ def _written_names(target: str, form: Format, content: LayerContent) -> tuple[st
 def _warnings(form: Format, content: LayerContent) -> list[str]:
     kind = GeometryType.parse(content.geometry_type)
     texts = []
-    if form in _RFC7946:
+    if form.is_rfc7946:
         texts += _crs_warnings(form, content.crs_wkt)
-    if kind.has_m and form in {*_RFC7946, FLATGEOBUF}:
+    if kind.has_m and (form.is_rfc7946 or form is FLATGEOBUF):
         texts.append(f"{form.name} has no room for measures (M); they are left out")
     if form is SHAPEFILE:
         cut = [name for name in content.schema.names if len(name.encode()) > SHORT_NAME_LENGTH]
@@ -270,15 +268,7 @@ def _warnings(form: Format, content: LayerContent) -> list[str]:
 def _crs_warnings(form: Format, crs_wkt: str | None) -> list[str]:
     if crs_wkt is None:
         return [f"{form.name} means WGS 84, but the layer has no CRS: coordinates are written as they are"]
-    crs = pyproj.CRS.from_wkt(crs_wkt)
-    if is_wgs84(crs):
+    if is_wgs84(crs_wkt):
         return []
-    return [f"{form.name} means WGS 84: geometries are transformed from {crs.name} to longitude and latitude"]
-
-
-def is_wgs84(crs: pyproj.CRS) -> bool:
-    """Whether coordinates are WGS 84 longitudes and latitudes, in whatever order the CRS names them."""
-    return any(crs.equals(pyproj.CRS.from_user_input(name), ignore_axis_order=True) for name in _WGS84_NAMES)
-
-
-_WGS84_NAMES = ("OGC:CRS84", "EPSG:4326", "EPSG:4979")
+    name = pyproj.CRS.from_wkt(crs_wkt).name
+    return [f"{form.name} means WGS 84: geometries are transformed from {name} to longitude and latitude"]

@@ -9,12 +9,13 @@ import pyarrow as pa
 import pyarrow.compute as pc
 import shapely
 
-from geoshape.layers.formats import FLATGEOBUF, GEOJSON, GEOJSON_SEQ, GEOPACKAGE, SHAPEFILE, Format
+from geoshape.layers.dimensions import with_dimensions
+from geoshape.layers.formats import FLATGEOBUF, GEOPACKAGE, SHAPEFILE, Format
+from geoshape.layers.rfc7946 import LongitudeLatitude
 from geoshape.layers.storage import Losses
 from geoshape.layers.wkb import MULTI_POLYGON, POLYGON, TYPE_CODES, UNKNOWN, GeometryType, headers, promoted
 from geoshape.rings import BoolArray
 
-_RFC7946 = frozenset({GEOJSON, GEOJSON_SEQ})
 _ONE_TYPE = frozenset({FLATGEOBUF, SHAPEFILE})
 _AREAL = frozenset({POLYGON, MULTI_POLYGON})
 
@@ -70,10 +71,13 @@ class ShapeFit:
     form : Format
     kind : GeometryType
         From `written_type`.
+    degrees : LongitudeLatitude or None
+        For GeoJSON, what turns geometries into longitude and latitude.
     """
 
     form: Format
     kind: GeometryType
+    degrees: LongitudeLatitude | None = None
 
     def fit(self, geometry: pa.BinaryArray, losses: Losses) -> pa.BinaryArray:
         """Turn geometries into what the layer can hold.
@@ -90,8 +94,8 @@ class ShapeFit:
             Single parts in the multi-part type where the layer has that; null where the format cannot hold a
             geometry. All other bytes are as they were.
         """
-        if self.form in _RFC7946:
-            return self._without_infinities(geometry, losses)
+        if self.degrees is not None:
+            return self.degrees.fit(geometry, losses)
         if self.kind.simple is not None and self.form in {GEOPACKAGE, FLATGEOBUF}:
             geometry = promoted(geometry, self.kind.base)
         if self.form in _ONE_TYPE and self.kind.base != UNKNOWN:
@@ -115,19 +119,9 @@ class ShapeFit:
         if n_flattened:
             losses[f"heights are left out, as the {self.form.name} layer has none"] += n_flattened
         wkb = np.asarray(geometry.to_numpy(zero_copy_only=False), dtype=object)
-        shapes = shapely.from_wkb(wkb[differs], on_invalid="ignore")
-        flat = shapely.force_3d(shapes) if self.kind.has_z else shapely.force_2d(shapes)
-        wkb[differs] = shapely.to_wkb(flat, output_dimension=3, flavor="iso")
+        shapes = np.asarray(shapely.from_wkb(wkb[differs], on_invalid="ignore"), dtype=object)
+        wkb[differs] = shapely.to_wkb(with_dimensions(shapes, has_z=self.kind.has_z), output_dimension=3, flavor="iso")
         return pa.array(wkb, pa.binary())
-
-    def _without_infinities(self, geometry: pa.BinaryArray, losses: Losses) -> pa.BinaryArray:
-        wkb = np.asarray(geometry.to_numpy(zero_copy_only=False), dtype=object)
-        shapes = shapely.from_wkb(wkb, on_invalid="ignore")
-        points, owner = shapely.get_coordinates(shapes, return_index=True)
-        unusable = np.zeros(len(geometry), dtype=np.bool_)
-        unusable[owner[~np.isfinite(points).all(axis=1)]] = True
-        text = f"geometries with coordinates that are not finite are null in {self.form.name}"
-        return _nulled(geometry, unusable, text, losses)
 
 
 def _nulled(geometry: pa.BinaryArray, where: BoolArray, text: str, losses: Losses) -> pa.BinaryArray:

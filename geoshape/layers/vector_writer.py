@@ -7,27 +7,25 @@ from pathlib import Path
 from typing import Any
 
 import pyarrow as pa
-import pyproj
 from pyogrio.raw import write_arrow
 
-from geoshape.layers.formats import FLATGEOBUF, GEOJSON, GEOJSON_SEQ, GEOPACKAGE, SHAPEFILE
+from geoshape.layers.formats import FLATGEOBUF, GEOPACKAGE, SHAPEFILE
 from geoshape.layers.names import free_name
-from geoshape.layers.plan import OutputPlan, is_wgs84
+from geoshape.layers.plan import OutputPlan
+from geoshape.layers.rfc7946 import LongitudeLatitude
 from geoshape.layers.shapefile import shape_type
 from geoshape.layers.vector_reader import quiet
 from geoshape.layers.wkb import GeometryType
 
 Rows = tuple[list[pa.Array], pa.BinaryArray]
 
-# Decimals of a degree: nothing is lost where coordinates pass through; 10 are 0.01 mm where they are transformed.
-_DECIMALS_KEPT = 15
-_DECIMALS_TRANSFORMED = 10
 # Said of what is meant, or counted and said better elsewhere.
 _EXPECTED = (
     "'crs' was not provided",
     "has been truncated to 254 characters",
     "Setting the M=2 hint",
     "Setting the Z=2 hint",
+    "No SRS set on layer",
 )
 
 
@@ -68,7 +66,8 @@ def write_vector(
             driver=plan.format.driver,
             geometry_name=geometry_name,
             geometry_type=str(GeometryType(kind.base, kind.has_z)),
-            crs=plan.crs_wkt,
+            # GeoJSON has one CRS, which is not to be named.
+            crs=None if plan.format.is_rfc7946 else plan.crs_wkt,
             encoding="UTF-8" if plan.format is SHAPEFILE else None,
             layer_options=_layer_options(plan, kind),
         )
@@ -84,8 +83,4 @@ def _layer_options(plan: OutputPlan, kind: GeometryType) -> dict[str, Any]:
         return {"SPATIAL_INDEX": "NO"}
     if plan.format is SHAPEFILE:
         return {"SHPT": shape_type(kind)}
-    passes = plan.crs_wkt is None or is_wgs84(pyproj.CRS.from_wkt(plan.crs_wkt))
-    precision = {"COORDINATE_PRECISION": str(_DECIMALS_KEPT if passes else _DECIMALS_TRANSFORMED)}
-    if plan.format is GEOJSON:
-        return {"RFC7946": "YES", **precision}
-    return precision if plan.format is GEOJSON_SEQ else {}
+    return {"COORDINATE_PRECISION": str(LongitudeLatitude(plan.crs_wkt).decimals)}

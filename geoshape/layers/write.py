@@ -19,6 +19,7 @@ from geoshape.layers.formats import CSV, GEOPACKAGE, GEOPARQUET, SHAPEFILE
 from geoshape.layers.lineage import Lineage, lineage_path, store_in_geopackage
 from geoshape.layers.parquet_writer import write_parquet
 from geoshape.layers.plan import LayerContent, OutputPlan, plan_output
+from geoshape.layers.rfc7946 import LongitudeLatitude
 from geoshape.layers.shapefile import CROSSWALK_SUFFIX, declare_numbers, write_crosswalk
 from geoshape.layers.shapes import ShapeFit, written_type
 from geoshape.layers.staging import copy_database, publish, staged
@@ -208,7 +209,8 @@ def _write_through_gdal(plan: OutputPlan, producer: _Producer, losses: Losses, m
     stream = iter(producer)
     first = next(stream, None)
     kind = written_type(GeometryType.parse(plan.geometry_type), plan.format, first.geometry if first else None)
-    fit = ShapeFit(plan.format, kind)
+    degrees = LongitudeLatitude(plan.crs_wkt) if plan.format.is_rfc7946 else None
+    fit = ShapeFit(plan.format, kind, degrees)
     whole = chain([] if first is None else [first], stream)
     rows = (
         (stored_arrays(batch.attributes, schema, plan.format, losses), fit.fit(batch.geometry, losses))
