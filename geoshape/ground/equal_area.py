@@ -254,11 +254,12 @@ def _lonlat_grid(own: pyproj.CRS, bounds: Bounds | None) -> tuple[FloatArray, Fl
         use = own.area_of_use
         west, south, east, north = use.bounds if use is not None else (-180.0, -80.0, 180.0, 80.0)
         east += 360.0 if east < west else 0.0
-        x, y = np.meshgrid(np.linspace(west, east, GRID), np.linspace(south, north, GRID))
-        return x.ravel(), np.clip(y.ravel(), -NEAR_POLE_DEG, NEAR_POLE_DEG)
+        world = np.meshgrid(np.linspace(west, east, GRID), np.linspace(south, north, GRID))
+        return world[0].ravel(), np.clip(world[1].ravel(), -NEAR_POLE_DEG, NEAR_POLE_DEG)
     west, south, east, north = bounds
     grid = np.meshgrid(np.linspace(west, east, GRID), np.linspace(south, north, GRID))
-    x, y = grid[0].ravel(), grid[1].ravel()
+    x: FloatArray = grid[0].ravel()
+    y: FloatArray = grid[1].ravel()
     if own.is_projected:
         x, y = _to_lonlat(own, x, y)
     degrees = angle_unit_deg(own)

@@ -20,6 +20,9 @@ FRAME_LAYER, FRAME_NORTH, FRAME_SOUTH = 0, 1, 2
 POLAR_STEP_DEG = 0.1
 """Longest step in longitude and latitude of an outline on a polar plane: area and length to about 1e-7."""
 
+SEAM_TOLERANCE_DEG = 1e-4
+"""How far from the antimeridian, and from each other, the two ways of a detour to the pole may be."""
+
 _HALF, _WHOLE, _POLE = 180.0, 360.0, 90.0
 
 
@@ -156,16 +159,31 @@ def _to_pole(ring: Ring, frame: int, ellipsoid: Ellipsoid, *, is_subdivided: boo
 
 
 def _without_pole_detour(ring: Ring, pole: float) -> Ring:
-    """Drop the way along a meridian to the pole and back, which closes an outline on a flat map only."""
+    """Drop the way along the antimeridian to the pole and back, which closes an outline on a flat map only.
+
+    Real layers go there and back on longitudes that differ in the last digits, and stop short of the pole.
+    """
     points = ring[:-1][ring[:-1, 1] != pole]
-    kept: list[FloatArray] = []
-    for point in points:
-        kept.append(point)
-        while len(kept) > 2 and np.array_equal(kept[-1], kept[-3]):
-            del kept[-2:]
-        if len(kept) > 1 and np.array_equal(kept[-1], kept[-2]):
-            kept.pop()
-    return np.array([*kept, kept[0]]) if kept else ring
+    on_seam = np.abs(np.mod(points[:, 0], _WHOLE) - _HALF) <= SEAM_TOLERANCE_DEG
+    if len(points) < 3 or on_seam.all():
+        return np.concatenate((points, points[:1])) if len(points) else ring
+    first_off = int(np.argmin(on_seam))
+    points, on_seam = _rolled(points, first_off), np.roll(on_seam, -first_off)
+    keep = np.ones(len(points), dtype=np.bool_)
+    starts = np.flatnonzero(on_seam & ~np.roll(on_seam, 1))
+    ends = np.flatnonzero(on_seam & ~np.roll(on_seam, -1))
+    for start, end in zip(starts.tolist(), ends.tolist(), strict=True):
+        # There and back: the run begins and ends at the same place of the shore.
+        if abs(points[start, 1] - points[end, 1]) <= SEAM_TOLERANCE_DEG:
+            keep[start + 1 : end] = False
+    points = points[keep]
+    return np.concatenate((points, points[:1]))
+
+
+def _rolled(points: Ring, first: int) -> Ring:
+    """Let an unwrapped ring begin at another vertex; longitudes run on over the old beginning."""
+    turn = np.round((points[0, 0] - points[-1, 0]) / _WHOLE) * _WHOLE
+    return np.concatenate((points[first:], points[:first] - np.array([turn, 0.0])))
 
 
 def _subdivided(ring: Ring) -> Ring:
