@@ -15,7 +15,7 @@ from geoshape.geometry import ObjectArray
 from geoshape.ground.equal_area import plan_ground
 from geoshape.ground.layer_crs import resolve_crs
 from geoshape.ground.place import Ground, open_ground
-from geoshape.measure import ColumnValues, Measured, measure_geometries
+from geoshape.measuring import ColumnValues, Measured, measure_geometries
 from geoshape.options import MeasureOptions
 
 MAX_BATCH_VERTICES = 150_000

@@ -25,7 +25,7 @@ from geoshape.layers.plan import LayerContent, OutputPlan, plan_output
 from geoshape.layers.read import LayerBatch, LayerInfo, open_layer, read_batches
 from geoshape.layers.tables import add_columns
 from geoshape.layers.write import OutputBatch, write_batches
-from geoshape.measure import Measured, measure_geometries, wkb_of
+from geoshape.measuring import Measured, measure_geometries, wkb_of
 from geoshape.options import GROUND_CENTRED, Bounds, MeasureOptions, Parts, Source, Target
 from geoshape.pool import Workers
 
