@@ -102,8 +102,7 @@ def _measure_rows(
     polygons, verdicts = geometry.screen(geometries, unreadable, is_geographic=ground.plan.is_geographic)
     counts = geometry.count(polygons, geometries)
     polygons, frames, is_cut = ground.unwrap(polygons)
-    polygons = geometry.repair(polygons, verdicts, options.invalid, first_row)
-    polygons = rejoin(polygons, is_cut)
+    polygons = geometry.repair(rejoin(polygons, is_cut), verdicts, options.invalid, first_row)
     if options.holes is Holes.FILL:
         polygons = geometry.filled(polygons)
     source = geometry.ring_batch(polygons)

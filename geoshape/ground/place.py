@@ -194,13 +194,13 @@ class Ground:
     def _is_torn(self, batch: RingBatch, frames: IntArray) -> BoolArray:
         """Tell which features cross the far meridian of a projection that folds longitudes there."""
         torn = np.zeros(batch.n_features, dtype=np.bool_)
-        definition = self._target_crs.to_dict()
         if not batch.n_rings or not self.plan.is_geographic or "+over" in (self.plan.target_wkt or ""):
             return torn
-        if definition.get("proj") in {"laea", "stere", "aeqd", "ups"}:
+        meridian = _central_meridian(self._target_crs)
+        if meridian is None:
             return torn
         longitude, _ = self._globe.degrees(*_absolute(batch), frames[batch.vertex_feature])
-        turn = np.floor((longitude - definition.get("lon_0", 0.0) + FAR_MERIDIAN_DEG) / (2.0 * FAR_MERIDIAN_DEG))
+        turn = np.floor((longitude - meridian + FAR_MERIDIAN_DEG) / (2.0 * FAR_MERIDIAN_DEG))
         first = batch.ring_start[:-1]
         low, high = np.minimum.reduceat(turn, first), np.maximum.reduceat(turn, first)
         torn[batch.ring_feature[low != high]] = True
@@ -224,6 +224,15 @@ class Ground:
         deformation[~np.isfinite(deformation) | (np.abs(deformation) > 180.0)] = np.nan
         np.fmax.at(largest, owner, deformation)
         return largest
+
+
+def _central_meridian(crs: pyproj.CRS) -> float | None:
+    """Find the meridian opposite to which a projection is cut; None where it is whole all round, or does not tell."""
+    operation = crs.coordinate_operation
+    if operation is None or "zimuthal" in operation.method_name or "tereographic" in operation.method_name:
+        return None
+    found = [float(parameter.value) for parameter in operation.params if parameter.name.startswith("Longitude of")]
+    return found[0] if found else 0.0
 
 
 def _absolute(batch: RingBatch) -> tuple[FloatArray, FloatArray]:

@@ -17,7 +17,7 @@ ObjectArray = NDArray[np.object_]
 
 FRAME_LAYER, FRAME_NORTH, FRAME_SOUTH = 0, 1, 2
 
-POLAR_STEP_DEG = 0.1
+POLAR_STEP_DEG = 0.05
 """Longest step in longitude and latitude of an outline on a polar plane: area and length to about 1e-7."""
 
 SEAM_TOLERANCE_DEG = 1e-4
@@ -73,7 +73,8 @@ def rejoin(geometries: ObjectArray, is_cut: BoolArray) -> ObjectArray:
 
     Parameters
     ----------
-    geometries : (n,) object of valid Polygon, MultiPolygon or None
+    geometries : (n,) object of Polygon, MultiPolygon or None
+        Where a part is invalid by itself, the feature is left to be repaired.
     is_cut : (n,) bool
         From `unwrap`.
 
@@ -86,7 +87,9 @@ def rejoin(geometries: ObjectArray, is_cut: BoolArray) -> ObjectArray:
         return geometries
     joined = geometries.copy()
     for row in rows.tolist():
-        joined[row] = shapely.unary_union(geometries[row])
+        parts = shapely.get_parts(geometries[row])
+        if shapely.is_valid(parts).all():
+            joined[row] = shapely.union_all(parts)
     return joined
 
 
@@ -188,8 +191,8 @@ def _rolled(points: Ring, first: int) -> Ring:
 
 def _subdivided(ring: Ring) -> Ring:
     step = np.diff(ring, axis=0)
-    # The closing edge of a ring round the pole goes on in the same sense.
-    step[:, 0] -= _WHOLE * np.round(step[:, 0] / _WHOLE) * (np.abs(step[:, 0]) > _HALF)
+    # The last vertex of a full turn is the first, a turn further.
+    step[-1, 0] -= _WHOLE * np.round(step[-1, 0] / _WHOLE)
     # The edge between the two ends of a full turn has no length: no piece of it.
     pieces = np.ceil(np.abs(step).max(axis=1) / POLAR_STEP_DEG).astype(np.int64)
     edge = np.repeat(np.arange(len(step)), pieces)

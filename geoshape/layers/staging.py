@@ -14,6 +14,8 @@ from pathlib import Path
 from geoshape.errors import WriteError
 
 _PREFIX = ".geoshape-"
+# On Windows signal 0 is not a question but an interrupt.
+_SIGNAL_0_ASKS = os.name != "nt"
 _STALE_SECONDS = 86_400.0
 # Parts of a shapefile besides itself: an older one's index, say, would be wrong beside a new one.
 _SHAPEFILE_PARTS = (".shx", ".dbf", ".prj", ".cpg", ".qix", ".sbn", ".sbx", ".fbn", ".fbx", ".ain", ".aih", ".shp.xml")
@@ -74,8 +76,8 @@ def _is_abandoned(pid: int, folder: Path) -> bool:
     # A folder of our own number was left by an earlier process: in a container every run may have the same.
     if pid == os.getpid():
         return True
-    if os.name == "nt":
-        # There signal 0 is not a question but an interrupt; wait until nobody can still be at it.
+    if not _SIGNAL_0_ASKS:
+        # Wait until nobody can still be at it.
         return time.time() - folder.stat().st_mtime > _STALE_SECONDS
     try:
         os.kill(pid, 0)

@@ -3,7 +3,9 @@
 from __future__ import annotations
 
 import datetime as dt
-from collections.abc import Callable, Iterator
+import os
+from collections.abc import Iterator
+from contextlib import contextmanager
 from pathlib import Path
 
 import pyarrow as pa
@@ -15,6 +17,8 @@ from geoshape.layers.plan import LayerContent, OutputPlan
 from geoshape.layers.tables import add_columns
 from geoshape.layers.write import OutputBatch
 from geoshape.options import MeasureOptions
+
+NOBODY = 65534
 
 DATA = Path(__file__).parents[1] / "data"
 WORLD = DATA / "world_geodesic_area" / "world.gpkg"
@@ -138,4 +142,14 @@ def text_column(name: str, short_name: str | None = None) -> Column:
     return Column(name, short_name or name[:10], Kind.TEXT, "", None, None, "made up", "", "record")
 
 
-Maker = Callable[[Path], None]
+@contextmanager
+def as_nobody() -> Iterator[None]:
+    """Rights do not bind the superuser: be somebody else for a while."""
+    if os.geteuid() != 0:
+        yield
+        return
+    os.seteuid(NOBODY)
+    try:
+        yield
+    finally:
+        os.seteuid(0)
