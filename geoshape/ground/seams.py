@@ -166,12 +166,14 @@ def _without_pole_detour(ring: Ring, pole: float) -> Ring:
 
     Real layers go there and back on longitudes that differ in the last digits, and stop short of the pole.
     """
+    turn = np.array([[_WHOLE * np.round((ring[-1, 0] - ring[0, 0]) / _WHOLE), 0.0]])
     points = ring[:-1][ring[:-1, 1] != pole]
     on_seam = np.abs(np.mod(points[:, 0], _WHOLE) - _HALF) <= SEAM_TOLERANCE_DEG
     if len(points) < 3 or on_seam.all():
-        return np.concatenate((points, points[:1])) if len(points) else ring
+        return np.concatenate((points, points[:1] + turn)) if len(points) else ring
     first_off = int(np.argmin(on_seam))
-    points, on_seam = _rolled(points, first_off), np.roll(on_seam, -first_off)
+    points = np.concatenate((points[first_off:], points[:first_off] + turn))
+    on_seam = np.roll(on_seam, -first_off)
     keep = np.ones(len(points), dtype=np.bool_)
     starts = np.flatnonzero(on_seam & ~np.roll(on_seam, 1))
     ends = np.flatnonzero(on_seam & ~np.roll(on_seam, -1))
@@ -180,19 +182,11 @@ def _without_pole_detour(ring: Ring, pole: float) -> Ring:
         if abs(points[start, 1] - points[end, 1]) <= SEAM_TOLERANCE_DEG:
             keep[start + 1 : end] = False
     points = points[keep]
-    return np.concatenate((points, points[:1]))
-
-
-def _rolled(points: Ring, first: int) -> Ring:
-    """Let an unwrapped ring begin at another vertex; longitudes run on over the old beginning."""
-    turn = np.round((points[0, 0] - points[-1, 0]) / _WHOLE) * _WHOLE
-    return np.concatenate((points[first:], points[:first] - np.array([turn, 0.0])))
+    return np.concatenate((points, points[:1] + turn))
 
 
 def _subdivided(ring: Ring) -> Ring:
     step = np.diff(ring, axis=0)
-    # The last vertex of a full turn is the first, a turn further.
-    step[-1, 0] -= _WHOLE * np.round(step[-1, 0] / _WHOLE)
     # The edge between the two ends of a full turn has no length: no piece of it.
     pieces = np.ceil(np.abs(step).max(axis=1) / POLAR_STEP_DEG).astype(np.int64)
     edge = np.repeat(np.arange(len(step)), pieces)
