@@ -9,12 +9,13 @@ import pyarrow as pa
 import pyarrow.csv as pa_csv
 
 
-def write_csv(sink: str | IO[bytes], schema: pa.Schema, rows: Iterable[list[pa.Array]]) -> None:
+def write_csv(sink: IO[bytes], schema: pa.Schema, rows: Iterable[list[pa.Array]]) -> None:
     """Write rows as CSV (RFC 4180, UTF-8): null is empty, an empty text is quoted.
 
     Parameters
     ----------
-    sink : str or binary file
+    sink : binary file
+        Stays open.
     schema : pyarrow.Schema
     rows : iterable of list of pyarrow.Array
         Batches, in the schema.

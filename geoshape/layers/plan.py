@@ -8,7 +8,6 @@ from dataclasses import dataclass
 from pathlib import Path
 
 import pyarrow as pa
-import pyogrio
 import pyproj
 
 from geoshape.columns import SHORT_NAME_LENGTH, Column
@@ -26,11 +25,14 @@ from geoshape.layers.names import check_case, check_new_names, short_names
 from geoshape.layers.rfc7946 import is_wgs84
 from geoshape.layers.sources import archive_of, is_virtual
 from geoshape.layers.tables import column_fields
-from geoshape.layers.vector_reader import Failure, quiet
 from geoshape.layers.wkb import MULTI_POLYGON, POLYGON, UNKNOWN, GeometryType
 
 # Drivers that call a layer "Polygon" although a row of it may have several parts.
 _LOOSE_TYPES = frozenset({"ESRI Shapefile", "MapInfo File", "CSV"})
+_SQLITE_HEADER_BYTES = 100
+_SQLITE_MAGIC = b"SQLite format 3\0"
+_APPLICATION_ID = slice(68, 72)
+_GEOPACKAGE_IDS = frozenset({b"GPKG", b"GP10", b"GP11"})
 
 
 @dataclass(frozen=True)
@@ -186,14 +188,13 @@ def _check_place(target: str) -> None:
         raise WriteError(f"{target}: only plain files can be written; name a file in a folder")
     path = Path(target)
     folder = path.parent
-    if path.is_dir():
-        raise WriteError(f"{target}: is a folder; name a file in it")
     try:
-        is_there = folder.is_dir()
+        if path.is_dir():
+            raise WriteError(f"{target}: is a folder; name a file in it")
+        if not folder.is_dir():
+            raise WriteError(f"{target}: the folder {folder} does not exist; make it first")
     except PermissionError:
-        is_there = False
-    if not is_there:
-        raise WriteError(f"{target}: the folder {folder} does not exist; make it first")
+        raise WriteError(f"{target}: the folder {folder} may not be entered; choose another folder") from None
     if not os.access(folder, os.W_OK | os.X_OK):
         raise WriteError(f"{target}: nothing can be written in {folder}; choose another folder")
 
@@ -221,13 +222,12 @@ def _check_existing(target: str, path: Path, *, overwrite: bool) -> None:
 
 
 def _is_geopackage(path: Path) -> bool:
+    """Whether a file says that it is a GeoPackage (OGC 12-128r19, clause 1.1.1.1)."""
     if not path.is_file():
         return False
-    try:
-        with quiet():
-            return bool(pyogrio.read_info(path)["driver"] == GEOPACKAGE.driver)
-    except Failure:
-        return False
+    with path.open("rb") as file:
+        header = file.read(_SQLITE_HEADER_BYTES)
+    return header.startswith(_SQLITE_MAGIC) and header[_APPLICATION_ID] in _GEOPACKAGE_IDS
 
 
 def _written_names(target: str, form: Format, content: LayerContent) -> tuple[str, ...]:

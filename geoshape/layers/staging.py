@@ -17,6 +17,8 @@ _PREFIX = ".geoshape-"
 # On Windows signal 0 is not a question but an interrupt.
 _SIGNAL_0_ASKS = os.name != "nt"
 _STALE_SECONDS = 86_400.0
+# What a driver could not write is not told; where less than this is free, the disk is what failed.
+_NO_ROOM_BYTES = 1_000_000
 # Parts of a shapefile besides itself: an older one's index, say, would be wrong beside a new one.
 _SHAPEFILE_PARTS = (".shx", ".dbf", ".prj", ".cpg", ".qix", ".sbn", ".sbx", ".fbn", ".fbx", ".ain", ".aih", ".shp.xml")
 _JOURNALS = ("-wal", "-shm", "-journal")
@@ -139,16 +141,33 @@ def _settle_journal(target: Path) -> None:
         connection.execute("PRAGMA wal_checkpoint(TRUNCATE)")
 
 
+def has_room(folder: Path) -> bool:
+    """Whether a folder's disk has room for anything worth mentioning."""
+    try:
+        return shutil.disk_usage(folder).free >= _NO_ROOM_BYTES
+    except OSError:
+        return True
+
+
 def copy_database(source: Path, copy: Path) -> None:
     """Copy a GeoPackage, changes that wait in its journal included.
 
     Raises
     ------
+    WriteError
+        It is damaged.
     sqlite3.Error
-        It is no database, or the copy cannot be written.
+        The copy cannot be written.
     """
     with (
         closing(sqlite3.connect(f"{source.absolute().as_uri()}?mode=ro", uri=True)) as old,
         closing(sqlite3.connect(copy)) as new,
     ):
-        old.backup(new)
+        try:
+            old.backup(new)
+        except sqlite3.DatabaseError as error:
+            if isinstance(error, sqlite3.OperationalError):
+                raise
+            raise WriteError(
+                f"{source}: the GeoPackage that is there is damaged ({error}); remove it, or write to another file"
+            ) from None

@@ -248,18 +248,34 @@ def stream(info: LayerInfo) -> Iterator[Rows]:
 
 def _check_end(info: LayerInfo, done: int) -> None:
     """Find out whether the file was whole, where the stream does not tell."""
-    if info.row_count is not None:
-        is_whole = done >= info.row_count
-    else:
-        # The reader that loses track of nulls does notice the end.
-        with quiet():
-            try:
-                with open_arrow(info.source, layer=info.layer, use_pyarrow=True) as (_, reader):
-                    is_whole = all(batch.num_rows for batch in reader)
-            except Failure:
-                is_whole = False
-    if not is_whole:
+    count = info.row_count
+    whole = done >= count if count is not None else is_whole(info.source, None, layer=info.layer)
+    if not whole:
         raise ReadError(f"{info.path}: the file is cut off; fetch or copy it again")
+
+
+def is_whole(source: str | Path, row_count: int | None, *, layer: str | None = None) -> bool:
+    """Go through a FlatGeobuf file to its end: neither its writer nor our way of reading tells when it is cut off.
+
+    Parameters
+    ----------
+    source : str or Path
+    row_count : int or None
+        Rows it should hold, where that is known.
+    layer : str or None
+
+    Returns
+    -------
+    bool
+    """
+    # The reader that loses track of nulls is the one that notices the end.
+    with quiet():
+        try:
+            with open_arrow(source, layer=layer, use_pyarrow=True) as (_, reader):
+                rows = sum(batch.num_rows for batch in reader)
+        except Failure:
+            return False
+    return row_count is None or rows == row_count
 
 
 class _Reader:

@@ -77,7 +77,9 @@ def write_vector(
 def _layer_options(plan: OutputPlan, kind: GeometryType) -> dict[str, Any]:
     names = plan.written_names
     if plan.format is GEOPACKAGE:
-        return {"FID": free_name("fid", names), "GEOMETRY_NAME": free_name("geom", names), "SPATIAL_INDEX": "YES"}
+        own_names = {"FID": free_name("fid", names), "GEOMETRY_NAME": free_name("geom", names)}
+        # Overwriting takes the place of a layer whose name differs in case only, too.
+        return own_names | {"SPATIAL_INDEX": "YES", "OVERWRITE": "YES"}
     if plan.format is FLATGEOBUF:
         # Its index would sort the rows, and refuse those without geometry.
         return {"SPATIAL_INDEX": "NO"}

@@ -15,16 +15,16 @@ import pyarrow as pa
 
 from geoshape.errors import WriteError
 from geoshape.layers.csv_writer import write_csv
-from geoshape.layers.formats import CSV, GEOPACKAGE, GEOPARQUET, SHAPEFILE
+from geoshape.layers.formats import CSV, FLATGEOBUF, GEOPACKAGE, GEOPARQUET, SHAPEFILE
 from geoshape.layers.lineage import Lineage, lineage_path, store_in_geopackage
 from geoshape.layers.parquet_writer import write_parquet
 from geoshape.layers.plan import LayerContent, OutputPlan, plan_output
 from geoshape.layers.rfc7946 import LongitudeLatitude
 from geoshape.layers.shapefile import CROSSWALK_SUFFIX, declare_numbers, write_crosswalk
 from geoshape.layers.shapes import ShapeFit, written_type
-from geoshape.layers.staging import copy_database, publish, staged
+from geoshape.layers.staging import copy_database, has_room, publish, staged
 from geoshape.layers.storage import Losses, is_dbf_number, loss_texts, stored_arrays, stored_schema
-from geoshape.layers.vector_reader import one_line
+from geoshape.layers.vector_reader import is_whole, one_line
 from geoshape.layers.vector_writer import write_vector
 from geoshape.layers.wkb import GeometryType
 
@@ -171,22 +171,36 @@ def _write_file(
     beside = [lineage_path(path), *([crosswalk] if plan.format is SHAPEFILE else [])]
     with staged(path) as folder:
         made = folder / path.name
-        if plan.format is CSV:
-            _write_csv(plan, producer, losses, made)
-        elif plan.format is GEOPARQUET:
-            schema = stored_schema(plan.schema, plan.written_names, plan.format)
-            rows = ((batch.attributes.columns, batch.geometry) for batch in producer)
-            write_parquet(made, schema, plan.crs_wkt, rows, told)
-        else:
+        try:
             if plan.keeps_layers:
                 copy_database(path, made)
-            complaints = _write_through_gdal(plan, producer, losses, made)
-        if plan.format is SHAPEFILE:
-            write_crosswalk(folder / crosswalk.name, plan)
-        if plan.format is not GEOPARQUET:
-            _keep_lineage(plan, made, told())
+            complaints = _write_rows(plan, producer, losses, made, told)
+            if plan.format is SHAPEFILE:
+                write_crosswalk(folder / crosswalk.name, plan)
+            if plan.format is not GEOPARQUET:
+                _keep_lineage(plan, made, told())
+        except Failure as error:
+            if producer.error is None and not has_room(folder):
+                raise OSError(errno.ENOSPC, one_line(error)) from error
+            raise
         names = publish(folder, path, beside)
     return tuple(str(file) for file in beside if file.name in names), complaints
+
+
+def _write_rows(plan: OutputPlan, producer: _Producer, losses: Losses, made: Path, told: _Told) -> tuple[str, ...]:
+    """Write the layer itself; give the driver's complaints."""
+    if plan.format is CSV:
+        _write_csv(plan, producer, losses, made)
+        return ()
+    if plan.format is GEOPARQUET:
+        schema = stored_schema(plan.schema, plan.written_names, plan.format)
+        rows = ((batch.attributes.columns, batch.geometry) for batch in producer)
+        write_parquet(made, schema, plan.crs_wkt, rows, told)
+        return ()
+    complaints = _write_through_gdal(plan, producer, losses, made)
+    if plan.format is FLATGEOBUF and not is_whole(made, producer.rows):
+        raise OSError(errno.ENOSPC, "the file is not whole")
+    return complaints
 
 
 def _keep_lineage(plan: OutputPlan, made: Path, text: str | None) -> None:
@@ -201,7 +215,11 @@ def _keep_lineage(plan: OutputPlan, made: Path, text: str | None) -> None:
 def _write_csv(plan: OutputPlan, producer: _Producer, losses: Losses, made: Path | None) -> None:
     schema = stored_schema(plan.schema, plan.written_names, CSV)
     rows = (stored_arrays(batch.attributes, schema, CSV, losses) for batch in producer)
-    write_csv(sys.stdout.buffer if made is None else str(made), schema, rows)
+    if made is None:
+        write_csv(sys.stdout.buffer, schema, rows)
+        return
+    with made.open("wb") as file:
+        write_csv(file, schema, rows)
 
 
 def _write_through_gdal(plan: OutputPlan, producer: _Producer, losses: Losses, made: Path) -> tuple[str, ...]:

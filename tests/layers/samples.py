@@ -148,8 +148,8 @@ def as_nobody() -> Iterator[None]:
     if os.geteuid() != 0:
         yield
         return
-    os.seteuid(NOBODY)
+    os.setresuid(NOBODY, NOBODY, 0)
     try:
         yield
     finally:
-        os.seteuid(0)
+        os.setresuid(0, 0, 0)
