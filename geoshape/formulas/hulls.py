@@ -39,6 +39,7 @@ def convex_hulls(batch: RingBatch) -> RingBatch:
 
 
 def _ring_hulls(rings: RingBatch) -> RingBatch:
+    rings = _without_reflex(rings)
     index, is_hull = _outside_of_extremes(rings)
     ring = rings.vertex_ring[index]
     x, y = rings.x[index], rings.y[index]
@@ -56,6 +57,16 @@ def _ring_hulls(rings: RingBatch) -> RingBatch:
         keep = is_hull | candidate
         index, ring, x, y, is_hull = index[keep], ring[keep], x[keep], y[keep], is_hull[keep]
     return rings.take_vertices(index, np.bincount(ring, minlength=rings.n_rings))
+
+
+def _without_reflex(rings: RingBatch) -> RingBatch:
+    """Drop the vertices where a ring turns inwards: in a simple ring none of them is on the hull."""
+    dx, dy = rings.next_x - rings.x, rings.next_y - rings.y
+    before_x, before_y = np.roll(dx, 1), np.roll(dy, 1)
+    first, last = rings.ring_start[:-1], rings.ring_start[1:] - 1
+    before_x[first], before_y[first] = dx[last], dy[last]
+    index = np.flatnonzero(before_x * dy >= before_y * dx)
+    return rings.take_vertices(index, np.bincount(rings.vertex_ring[index], minlength=rings.n_rings))
 
 
 def _ring_extent(rings: RingBatch) -> FloatArray:
