@@ -62,6 +62,8 @@ def tolerance(row, name, relative):
     scale = abs(row[name])
     if name.startswith(("hu_", "affine_")):
         scale = max(scale, 1e-3 * zero_scales(row).get(name, 0.0))
+    if name == "axis_strength":
+        scale = max(scale, 1e-5)
     if name.startswith("fd_"):
         # An amplitude may vanish; it is relative to |Z_1|, which is 1.
         scale = max(scale, 1e-3)

@@ -4,13 +4,13 @@ from math import sqrt
 
 import numpy as np
 import pytest
-from hypothesis import example, given, settings
+from hypothesis import assume, example, given, settings
 from hypothesis import strategies as st
-from shapely import MultiPolygon, Polygon, affinity, box
+from shapely import MultiPoint, MultiPolygon, Polygon, affinity, box
 
 from geoshape.formulas import calipers, hulls
 from tests import naive, shapes, strategies
-from tests.formulas.plane import angle_between, batch_of
+from tests.formulas.plane import angle_between, batch_of, row_of
 
 TOUCHING = MultiPolygon([Polygon([(0, 10), (-5, 0), (-1, 0)]), Polygon([(0, 10), (1, 0), (5, 0)])])
 """Two parts that share a corner of their hull."""
@@ -199,3 +199,70 @@ def test_no_features():
         for value in (spans.longest, spans.shortest, spans.longest_azimuth_deg, spans.rectangle_area, circles.radius):
             assert value.shape == (batch.n_features,)
             assert np.isnan(value).all()
+
+
+@given(
+    st.lists(st.tuples(st.integers(-1000, 1000), st.integers(-1000, 1000)), min_size=3, max_size=8, unique=True),
+    st.sampled_from((1e-3, 1e-4, 1e-5, 1e-6)),
+    strategies.angles_deg(),
+)
+@settings(max_examples=150)
+def test_circle_of_thin_hulls(points, flatness, angle):
+    ring = shapes.turned([(x / 2.0, y * flatness / 2.0) for x, y in points], angle)
+    hull = MultiPoint(ring).convex_hull
+    assume(hull.geom_type == "Polygon")
+    radius = measured(hull)[3][2]
+    assert radius == pytest.approx(naive.smallest_circle(naive.hull(naive.parts_of(hull)))[2], rel=1e-11)
+
+
+def wedges(flatness, n=500, seed=20):
+    """Slivers 1 long: triangles with their tip anywhere over the base, and strips with ends of different width."""
+    random = np.random.default_rng(seed)
+    for _ in range(n):
+        low, high, tip = flatness * random.uniform(-1, 1, size=3)
+        base = [(0, -flatness), (0, flatness)]
+        end = [(1, tip)] if random.random() < 0.5 else [(1, max(low, high)), (1, min(low, high))]
+        yield Polygon(shapes.turned([*base, *end], random.uniform(0, 360)))
+
+
+@pytest.mark.parametrize("flatness", [1e-2, 1e-3, 1e-4, 1e-5, 1e-6])
+def test_circles_of_slivers(flatness):
+    """As between the edges of two layers: a hundred metres long and a centimetre wide."""
+    polygons = list(wedges(flatness))
+    batch = batch_of(*polygons)
+    radius = calipers.smallest_circle(hulls.convex_hulls(batch)).radius
+    assert np.isfinite(radius).all()
+    for at in range(0, len(polygons), 10):
+        corners = naive.hull(naive.parts_of(polygons[at]))
+        assert radius[at] == pytest.approx(naive.smallest_circle(corners)[2], rel=1e-11)
+        assert row_of(polygons[at])["reock"] == pytest.approx(
+            polygons[at].area / (np.pi * naive.smallest_circle(corners)[2] ** 2), rel=1e-9
+        )
+
+
+def thin_hulls(n, seed=20):
+    """Hulls of a few points in a narrow band, and slivers."""
+    random = np.random.default_rng(seed)
+    points = random.normal(size=(n, 6, 2))
+    points[..., 1] *= 10.0 ** random.uniform(-7, 0, size=(n, 1))
+    angle = random.uniform(0, 2 * np.pi, size=(n, 1))
+    x = points[..., 0] * np.cos(angle) - points[..., 1] * np.sin(angle)
+    y = points[..., 0] * np.sin(angle) + points[..., 1] * np.cos(angle)
+    bands = [MultiPoint(np.column_stack(pair)).convex_hull for pair in zip(x, y, strict=True)]
+    return bands + [wedge for power in range(2, 7) for wedge in wedges(10.0**-power, n // 5)]
+
+
+def test_circles_of_many_thin_hulls_hold_all_and_are_held_by_their_points():
+    polygons = thin_hulls(2000)
+    batch = batch_of(*polygons)
+    hull = hulls.convex_hulls(batch)
+    circles = calipers.smallest_circle(hull)
+    assert np.isfinite(circles.radius).all()
+    reach = np.hypot(hull.x - circles.x[hull.vertex_feature], hull.y - circles.y[hull.vertex_feature])
+    farthest = np.maximum.reduceat(reach, hull.ring_start[:-1])
+    assert (farthest <= circles.radius * (1 + 1e-11)).all()
+    # A circle is smallest when its centre lies in the hull of the points on it: on their diameter or in an acute
+    # triangle of them. Half the longest span is a lower bound, its 2 / sqrt(3) an upper one (Jung 1901).
+    longest = calipers.calipers(hull).longest
+    assert (circles.radius >= longest / 2 * (1 - 1e-12)).all()
+    assert (circles.radius <= longest / sqrt(3) * (1 + 1e-12)).all()
