@@ -6,14 +6,21 @@ from collections import Counter
 from dataclasses import dataclass, field
 
 import numpy as np
+import pyproj
 import shapely
 
 from geoshape import geometry
 from geoshape.columns import Status
+from geoshape.errors import LayerChoiceError
 from geoshape.formulas.arclength import edge_lengths
 from geoshape.formulas.staircase import is_staircase
-from geoshape.geometry import ObjectArray
-from geoshape.ground.place import Ground
+from geoshape.geometry import ObjectArray, read_wkb
+from geoshape.ground.equal_area import areal_scale, horizontal, layer_grid, plan_ground
+from geoshape.ground.layer_crs import resolve_crs
+from geoshape.ground.place import Ground, open_ground
+from geoshape.layers.layer import LayerInfo, LayerSummary
+from geoshape.layers.read import list_layers, open_layer, read_batches
+from geoshape.options import GROUND_CENTRED, GROUND_PLANE, MeasureOptions, Source
 from geoshape.rings import FloatArray, IntArray
 
 _LOG_LOW, _LOG_HIGH, _BINS_PER_DECADE = -6.0, 9.0, 200
@@ -73,6 +80,98 @@ class Findings:
     duplicate_rows: int
     staircase_rows: int
     spacing: Spacing | None
+
+
+@dataclass(frozen=True)
+class CrsVerdict:
+    """Whether areas would be right in a layer's own coordinates.
+
+    Attributes
+    ----------
+    name : str or None
+        Of the CRS; None where the layer has none.
+    unit : str
+        Of the coordinates; empty where it is not known.
+    is_geographic : bool
+    areal_scale : (float, float) or None
+        Least and largest over the layer, 1 where areas are true; None for degrees and without a CRS.
+    """
+
+    name: str | None
+    unit: str
+    is_geographic: bool
+    areal_scale: tuple[float, float] | None
+
+
+@dataclass(frozen=True)
+class Inspection:
+    """A layer looked at.
+
+    Attributes
+    ----------
+    path : str
+    layers : tuple of LayerSummary
+        All layers of the file.
+    info : LayerInfo or None
+        The layer looked at; None where the file holds several and none was named.
+    crs : CrsVerdict or None
+    findings : Findings or None
+    """
+
+    path: str
+    layers: tuple[LayerSummary, ...]
+    info: LayerInfo | None
+    crs: CrsVerdict | None
+    findings: Findings | None
+
+
+def inspect_file(source: Source, *, assume_crs: str | None = None) -> Inspection:
+    """Look at a layer.
+
+    Parameters
+    ----------
+    source : Source
+    assume_crs : str or None
+        CRS of a layer that does not say its own.
+
+    Returns
+    -------
+    Inspection
+
+    Raises
+    ------
+    ReadError
+        The file cannot be read, or has no layer of that name.
+
+    Examples
+    --------
+    >>> seen = inspect_file(Source(path="tests/data/world_geodesic_area/world.gpkg"))
+    >>> seen.findings.rows, seen.findings.parts, seen.crs.is_geographic
+    (177, 289, True)
+    """
+    layers = list_layers(source.path)
+    try:
+        info = open_layer(source.path, layer=source.layer, where=source.where, bbox=source.bbox)
+    except LayerChoiceError:
+        if source.layer is not None or not layers:
+            raise
+        return Inspection(str(source.path), layers, None, None, None)
+    options = MeasureOptions(assume_crs=assume_crs)
+    crs = resolve_crs(pyproj.CRS(info.crs_wkt) if info.crs_wkt else None, options)
+    ground = GROUND_PLANE if crs is None else GROUND_CENTRED
+    inspector = Inspector(open_ground(plan_ground(crs, None, MeasureOptions(ground=ground))))
+    for batch in read_batches(info):
+        inspector.add(*read_wkb(batch.geometry.to_pylist()))
+    return Inspection(str(source.path), layers, info, _verdict(crs, info), inspector.findings())
+
+
+def _verdict(crs: pyproj.CRS | None, info: LayerInfo) -> CrsVerdict:
+    if crs is None:
+        return CrsVerdict(None, "", is_geographic=False, areal_scale=None)
+    own = horizontal(crs)
+    unit = own.axis_info[0].unit_name if own.axis_info else ""
+    scale = areal_scale(own, layer_grid(own, info.bounds)) if own.is_projected else None
+    return CrsVerdict(crs.name, unit, own.is_geographic, scale)
 
 
 @dataclass(eq=False)

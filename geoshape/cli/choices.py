@@ -139,6 +139,8 @@ def _choice(kind: type[Edges | Spectrum | Parts | Holes | Invalid]) -> click.Cho
     return click.Choice([str(member) for member in kind])
 
 
+assume_crs_option = click.option("--assume-crs", metavar="CRS", help="CRS of a layer that does not say its own.")
+
 measure_options = _bundle(
     "options",
     lambda values: MeasureOptions(**values),
@@ -150,7 +152,7 @@ measure_options = _bundle(
         help="Where shapes are measured: an equal-area plane centred on each, one for the layer, the coordinates as"
         " they are, or an equal-area CRS of your choice.",
     ),
-    click.option("--assume-crs", metavar="CRS", help="CRS of a layer that does not say its own."),
+    assume_crs_option,
     click.option(
         "--edges",
         type=_choice(Edges),
