@@ -61,7 +61,7 @@ def _opened(path: str, source: str) -> pq.ParquetFile:
     if Path(source).is_dir():
         raise ReadError(f"{path}: is a folder; name one Parquet file")
     try:
-        return pq.ParquetFile(source)
+        return pq.ParquetFile(source, page_checksum_verification=True)
     except Failure as error:
         text = " ".join(str(error).split()).rstrip(".")
         raise ReadError(f"{path}: cannot be read as Parquet ({text}); check that the file is whole") from None

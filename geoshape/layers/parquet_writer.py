@@ -100,7 +100,7 @@ def write_parquet(
     box_name = free_name("bbox", schema.names)
     stored = pa.schema([*schema, pa.field(geometry_name, pa.binary()), pa.field(box_name, _BOX_TYPE)])
     extent = _Extent()
-    with pq.ParquetWriter(path, stored, compression="zstd") as writer:
+    with pq.ParquetWriter(path, stored, compression="zstd", write_page_checksum=True) as writer:
         pending: list[pa.RecordBatch] = []
         for arrays, geometry in rows:
             batch = _with_boxes(arrays, geometry, stored, extent)

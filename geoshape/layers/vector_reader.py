@@ -248,7 +248,8 @@ def stream(info: LayerInfo) -> Iterator[Rows]:
 def _check_end(info: LayerInfo, done: int) -> None:
     """Find out whether the file was whole: not every stream tells that it ended before its time."""
     if info.driver in _BROKEN_NULLS:
-        if not is_whole(info.source, None if info.row_count is None else done, layer=info.layer):
+        count = info.row_count
+        if not (done >= count if count is not None else is_whole(info.source, None, layer=info.layer)):
             raise ReadError(f"{info.path}: the file is cut off; fetch or copy it again")
     elif info.row_count is not None and done < info.row_count:
         # The count that a file keeps may be out of date; asked for a condition, a database looks closely.
