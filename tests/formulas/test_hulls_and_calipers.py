@@ -49,37 +49,37 @@ def assert_all(polygon, relative=1e-9):
 @given(strategies.polygons())
 @example(TOUCHING)
 @example(row_of_squares(10, 30))
-@settings(max_examples=60)
+@settings(max_examples=40)
 def test_polygons(polygon):
     assert_all(polygon)
 
 
 @given(strategies.convex())
-@settings(max_examples=60)
+@settings(max_examples=30)
 def test_convex_polygons(polygon):
     assert_all(polygon)
 
 
 @given(strategies.thin())
-@settings(max_examples=60)
+@settings(max_examples=30)
 def test_thin_polygons(polygon):
     assert_all(polygon)
 
 
 @given(strategies.thin(flatness=(1e-5, 1e-7)))
-@settings(max_examples=60)
+@settings(max_examples=30)
 def test_slivers(polygon):
     assert_all(polygon, relative=1e-7)
 
 
 @given(strategies.lattice())
-@settings(max_examples=100)
+@settings(max_examples=50)
 def test_squares_of_a_grid(polygon):
     assert_all(polygon)
 
 
 @given(strategies.lattice(), strategies.angles_deg())
-@settings(max_examples=100)
+@settings(max_examples=50)
 def test_squares_of_a_turned_grid(polygon, angle):
     """Turned, the points on a side are no longer exactly on one line."""
     assert_all(affinity.rotate(polygon, angle, origin=(0, 0)))
@@ -99,7 +99,7 @@ def test_squares_in_a_turned_row(n, angle, gap):
 
 
 @given(strategies.polygons(), strategies.angles_deg(), st.integers(1, 9))
-@settings(max_examples=60)
+@settings(max_examples=40)
 def test_vertices_on_the_sides_of_the_hull_do_not_matter(polygon, angle, n):
     hull = affinity.rotate(polygon.convex_hull, angle, origin=(0, 0))
     corners = list(hull.exterior.coords)[:-1]
@@ -133,7 +133,7 @@ def test_circle_of_regular_polygons(n):
 
 
 @given(st.lists(st.tuples(st.floats(-1, 1), st.floats(-1, 1)), min_size=3, max_size=9, unique=True))
-@settings(max_examples=200)
+@settings(max_examples=60)
 def test_circle_of_any_points(points):
     """Points of any closeness: every hull gets a circle, it holds all, and is no larger than it need be."""
     hull = MultiPolygon([Polygon([p, (p[0] + 1e-9, p[1]), (p[0], p[1] + 1e-9)]) for p in points]).convex_hull
@@ -206,7 +206,7 @@ def test_no_features():
     st.sampled_from((1e-3, 1e-4, 1e-5, 1e-6)),
     strategies.angles_deg(),
 )
-@settings(max_examples=150)
+@settings(max_examples=100)
 def test_circle_of_thin_hulls(points, flatness, angle):
     ring = shapes.turned([(x / 2.0, y * flatness / 2.0) for x, y in points], angle)
     hull = MultiPoint(ring).convex_hull

@@ -30,7 +30,7 @@ def not_spectrum(row):
     return {name: value for name, value in row.items() if not name.startswith("fd_")}
 
 
-examples = settings(max_examples=40)
+examples = settings(max_examples=30)
 
 
 @given(strategies.polygons(), st.integers(1, 17))

@@ -1,5 +1,7 @@
 """The same numbers from libraries of other fields: OpenCV, scikit-image, shapely."""
 
+from pathlib import Path
+
 import cv2
 import numpy as np
 import pytest
@@ -13,6 +15,7 @@ from geoshape.formulas import axes, calipers, hulls, moments
 from tests import naive, shapes, strategies
 from tests.formulas.plane import angle_between, batch_of, central_of, row_of
 
+DATA = Path(__file__).parents[1] / "data"
 CHECKED = [shapes.TRIANGLE, shapes.QUAD, shapes.L_SHAPE, shapes.QUAD.mirrored, shapes.TRIANGLE.mirrored]
 
 
@@ -151,3 +154,53 @@ class TestScikitImage:
         corners = naive.hull([[list(Polygon(shapes.QUAD.parts[0][0]).exterior.coords)[:-1]]])
         assert found == pytest.approx(naive.feret_max(corners), rel=5e-3)
         assert row_of(shapes.QUAD.polygon)["feret_max_m"] == pytest.approx(found, rel=5e-3)
+
+
+def winding_polygons(seed=3):
+    """Simple polygons with deep pockets, and parts that touch at corners."""
+    random = np.random.default_rng(seed)
+    for _ in range(40):
+        way = random.normal(size=(random.integers(3, 40), 2)).cumsum(axis=0)
+        yield shapely.LineString(way).buffer(random.uniform(0.05, 0.5), quad_segs=3)
+        turn = np.linspace(0.3, random.uniform(1, 5), random.integers(30, 200))
+        spiral = turn * np.exp(2j * np.pi * turn)
+        inner = (spiral * (1 - 0.1 / turn))[::-1]
+        ring = np.concatenate((spiral, inner))
+        yield Polygon(np.column_stack((ring.real, ring.imag)))
+    for _ in range(150):
+        points = random.integers(0, 6, size=(random.integers(5, 30), 2))
+        triangles = shapely.get_parts(shapely.delaunay_triangles(shapely.MultiPoint(points)))
+        chosen = shapely.union_all(triangles[random.random(len(triangles)) < 0.6])
+        if not chosen.is_empty:
+            yield affinity.rotate(chosen, random.integers(0, 4) * 22.5)
+
+
+REAL_LAYERS = ["world_geodesic_area/world.gpkg", "wilderness_co_ut/coutwildrnp.shp", "mexico_states/mexicojoin.shp"]
+
+
+def assert_hulls_agree(polygons):
+    batch = batch_of(*polygons)
+    hull = hulls.convex_hulls(batch)
+    local = [affinity.translate(p, *-origin) for p, origin in zip(polygons, batch.origin, strict=True)]
+    expected = shapely.convex_hull(np.array(local, dtype=object))
+    assert hull.sum_ring_values(hull.ring_signed_area) == pytest.approx(shapely.area(expected), rel=1e-12)
+    assert calipers.smallest_circle(hull).radius == pytest.approx(shapely.minimum_bounding_radius(expected), rel=1e-11)
+    spans = calipers.calipers(hull)
+    assert spans.rectangle_area == pytest.approx(shapely.area(shapely.oriented_envelope(expected)), rel=1e-10)
+    for at, polygon in enumerate(expected):
+        corners = np.array(polygon.exterior.coords)
+        between = corners[:, None] - corners[None]
+        assert spans.longest[at] == pytest.approx(np.hypot(between[..., 0], between[..., 1]).max(), rel=1e-13)
+
+
+def test_hulls_of_winding_and_touching_polygons():
+    polygons = list(winding_polygons())
+    assert shapely.is_valid(polygons).all()
+    assert_hulls_agree(polygons)
+
+
+@pytest.mark.parametrize("layer", REAL_LAYERS)
+def test_hulls_of_real_polygons(layer):
+    geopandas = pytest.importorskip("geopandas")
+    polygons = geopandas.read_file(DATA / layer).geometry.dropna().values
+    assert_hulls_agree([p if p.is_valid else shapely.make_valid(p, method="structure") for p in polygons])

@@ -44,7 +44,7 @@ def at(coefficients, k):
 
 class TestResample:
     @given(strategies.polygons(), st.sampled_from((16, 37, 256)))
-    @settings(max_examples=60)
+    @settings(max_examples=30)
     def test_walks_the_outline(self, polygon, n):
         rings = outline_of(polygon)
         points = arclength.resample(rings, n)[0]
@@ -78,8 +78,8 @@ class TestResample:
         )
 
     def test_more_vertices_than_points(self):
-        rings = outline_of(Polygon(shapes.koch(5)))
-        assert rings.n_vertices > 3000
+        rings = outline_of(Polygon(shapes.koch(4)))
+        assert rings.n_vertices == 768
         points = arclength.resample(rings, 16)[0]
         assert np.abs(points - naive.resample(vertices(rings), 16)).max() <= 1e-12
 
@@ -142,7 +142,7 @@ class TestCoefficients:
             assert abs(at(found, k)) / abs(at(found, 1)) == pytest.approx(expected, rel=1e-11, abs=1e-13), k
 
     @given(strategies.stars())
-    @settings(max_examples=40)
+    @settings(max_examples=15)
     def test_area_is_pi_times_the_sum_of_k_c_squared(self, polygon):
         highest = 4000
         found = exact(polygon, highest)
@@ -158,7 +158,7 @@ class TestCoefficients:
         assert abs(at(exact(Polygon(shapes.regular(n))), 1)) == pytest.approx(first, rel=1e-13)
 
     @given(strategies.stars())
-    @settings(max_examples=60)
+    @settings(max_examples=30)
     def test_sampled_is_close_to_exact_and_converges(self, polygon):
         true = exact(polygon)
         size = abs(at(true, 1))
@@ -170,6 +170,7 @@ class TestCoefficients:
         assert errors[1] <= errors[0] / 16 + 1e-12 * size
 
     @given(strategies.stars())
+    @settings(max_examples=30)
     def test_reversing_swaps_k_and_minus_k(self, polygon):
         rings = outline_of(polygon)
         index = np.concatenate(([0], np.arange(rings.n_vertices - 1, 0, -1)))
@@ -181,12 +182,14 @@ class TestCoefficients:
         assert np.abs(there[::-1] - back).max() <= 1e-11 * abs(at(there, 1))
 
     @given(strategies.stars(), strategies.angles_deg())
+    @settings(max_examples=30)
     def test_turning_turns_only_phases(self, polygon, angle):
         c = exact(polygon)
         other = exact(affinity.rotate(polygon, angle, origin=(0, 0)))
         assert np.abs(other - c * cmath.exp(1j * pi * angle / 180)).max() <= 1e-11 * abs(at(c, 1))
 
     @given(strategies.stars(), st.integers(1, 20))
+    @settings(max_examples=30)
     def test_first_vertex_turns_only_phases(self, polygon, step):
         rings = outline_of(polygon)
         step %= rings.n_vertices
@@ -198,6 +201,7 @@ class TestCoefficients:
         assert np.abs(other - c * phase).max() <= 1e-11 * abs(at(c, 1))
 
     @given(strategies.stars())
+    @settings(max_examples=30)
     def test_reflection_conjugates(self, polygon):
         """The mirror image of the walk has the conjugate of c_-k for its c_k."""
         rings = outline_of(polygon)
@@ -206,7 +210,7 @@ class TestCoefficients:
         assert np.abs(other - c.conj()[::-1]).max() <= 1e-11 * abs(at(c, 1))
 
     @given(strategies.polygons())
-    @settings(max_examples=60)
+    @settings(max_examples=30)
     def test_reflection_keeps_amplitudes(self, polygon):
         exactly = MeasureOptions(spectrum=Spectrum.EXACT)
         row = row_of(polygon, exactly, SPECTRUM_ONLY)
@@ -271,7 +275,7 @@ class TestCoefficients:
 
 class TestColumns:
     @given(strategies.polygons())
-    @settings(max_examples=25)
+    @settings(max_examples=6)
     def test_exact_columns(self, polygon):
         options = MeasureOptions(spectrum=Spectrum.EXACT, harmonics=12)
         ring = vertices(outline_of(polygon))
@@ -282,7 +286,7 @@ class TestColumns:
         assert found == pytest.approx(expected, rel=1e-9, abs=1e-12)
 
     @given(strategies.polygons())
-    @settings(max_examples=10)
+    @settings(max_examples=6)
     def test_sampled_columns(self, polygon):
         ring = vertices(outline_of(polygon))
         points = naive.resample(ring, 128)
