@@ -1,71 +1,50 @@
-"""Outlines of pixels are told from outlines that only have right angles."""
+"""Outlines of pixels are told from outlines that only look like them."""
 
 import numpy as np
 import pytest
-from shapely import Polygon, affinity, box, union_all
+import shapely
+from shapely import affinity
 
 from geoshape.formulas.staircase import is_staircase
-from tests import shapes
-from tests.formulas.plane import batch_of
+from geoshape.geometry import ring_batch
 
 
-def pixels(condition, n=20, size=30.0, corner=(0.0, 0.0)):
-    """Union of the pixels of an n x n grid whose centres meet a condition."""
-    at = np.arange(n) + 0.5
-    column, row = np.meshgrid(at, at)
-    chosen = np.argwhere(condition(column, row))
-    x0, y0 = corner
-    cells = [box(x0 + c * size, y0 + r * size, x0 + (c + 1) * size, y0 + (r + 1) * size) for r, c in chosen]
-    return union_all(cells)
+def pixels(rows, width=1.0, height=1.0):
+    """Union of the pixels marked in rows of text."""
+    boxes = [
+        shapely.box(j * width, -i * height, (j + 1) * width, (1 - i) * height)
+        for i, row in enumerate(rows)
+        for j, sign in enumerate(row)
+        if sign == "#"
+    ]
+    return shapely.union_all(boxes)
 
 
-DISK = pixels(lambda x, y: (x - 10) ** 2 + (y - 10) ** 2 < 80)
-STRIPE = pixels(lambda x, y: abs(x - y) < 1.5)
-
-STAIRCASES = {
-    "disk": DISK,
-    "diagonal stripe": STRIPE,
-    "far away": pixels(lambda x, y: abs(x - y) < 1.5, corner=(4_321_000.0, 3_210_000.0)),
-    "pixels of a fraction of a degree": affinity.scale(DISK, 1e-5, 1e-5, origin=(0, 0)),
-    "disk with vertices on its sides": DISK.segmentize(7.0),
-    "smallest plus of pixels": shapes.PLUS.polygon,
-}
-
-OTHERS = {
-    "square": shapes.SQUARE.polygon,
-    "L": shapes.L_SHAPE.polygon,
-    "circle": Polygon(shapes.regular(64)),
-    "turned staircase": affinity.rotate(DISK, 10),
-    "steps of any length": affinity.affine_transform(shapes.PLUS.polygon, (1, 0, 0, 1, 0, 0)).difference(
-        box(2.59, 0.9, 4, 1.2)
-    ),
-    "nothing": None,
-}
+BLOB = pixels(["..##..", ".####.", "######", ".###..", "..#..."], 30.0, 30.0)
+OBLONG = pixels(["..##..", ".####.", "######", ".###..", "..#..."], 30.0, 20.0)
+HOUSE = shapely.Polygon(
+    [(0, 0), (9.3, 0), (9.3, 4.1), (12.7, 4.1), (12.7, 8.8), (7.9, 8.8), (7.9, 6.6), (5.2, 6.6), (5.2, 11.3),
+     (2.4, 11.3), (2.4, 7.7), (0, 7.7)]
+)  # fmt: skip
+CIRCLE = shapely.Point(0, 0).buffer(100.0)
 
 
-@pytest.mark.parametrize("name", STAIRCASES)
-def test_pixels_are_recognised(name):
-    assert is_staircase(batch_of(STAIRCASES[name])).tolist() == [True]
+@pytest.mark.parametrize(
+    ("shape", "expected"),
+    [
+        (BLOB, True),
+        (OBLONG, True),
+        (affinity.translate(BLOB, 5e6, 4e6), True),
+        (affinity.rotate(BLOB, 10), False),
+        (HOUSE, False),
+        (CIRCLE, False),
+        (shapely.box(0, 0, 1, 1), False),
+        (shapely.MultiPolygon([CIRCLE, affinity.translate(BLOB, 1000, 0)]), True),
+    ],
+)
+def test_tells_pixels_from_the_rest(shape, expected):
+    assert is_staircase(ring_batch(np.array([shape, None], dtype=object))).tolist() == [expected, False]
 
 
-@pytest.mark.parametrize("name", OTHERS)
-def test_others_are_not(name):
-    assert is_staircase(batch_of(OTHERS[name])).tolist() == [False]
-
-
-def test_together():
-    batch = batch_of(*STAIRCASES.values(), *OTHERS.values())
-    assert is_staircase(batch).tolist() == [True] * len(STAIRCASES) + [False] * len(OTHERS)
-
-
-def test_holes_do_not_matter():
-    holed = Polygon(shapes.regular(64, 100.0)).difference(
-        affinity.translate(affinity.scale(DISK, 0.1, 0.1), -300, -300)
-    )
-    assert holed.interiors
-    assert is_staircase(batch_of(holed)).tolist() == [False]
-
-
-def test_nothing_at_all():
-    assert is_staircase(batch_of()).tolist() == []
-    assert is_staircase(batch_of(None, None)).tolist() == [False, False]
+def test_nothing_in_nothing_out():
+    assert is_staircase(ring_batch(np.array([], dtype=object))).tolist() == []
