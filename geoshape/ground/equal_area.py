@@ -8,7 +8,7 @@ from enum import StrEnum
 
 import numpy as np
 import pyproj
-from pyproj.exceptions import CRSError, ProjError
+from pyproj.exceptions import CRSError
 
 from geoshape.errors import GroundError, OptionError
 from geoshape.options import GROUND_CENTRED, GROUND_LAYER, GROUND_PLANE, Bounds, MeasureOptions
@@ -16,6 +16,12 @@ from geoshape.rings import FloatArray
 
 AREAL_TOLERANCE = 1e-6
 """How far the areal scale of a named CRS may be from 1."""
+
+STEP_RAD = 2e-4
+"""Step of the differences that give an areal scale: small enough for 1e-8, large enough for rounding."""
+
+FARTHEST_M = 1e9
+"""Coordinates beyond this are PROJ's word for nowhere."""
 
 GRID = 21
 """Points a side of the grid over the layer on which a CRS is tried."""
@@ -28,7 +34,7 @@ WORLD_WIDTH_DEG = 160.0
 
 EQUATORIAL_LATITUDE_DEG = 15.0
 POLAR_LATITUDE_DEG = 70.0
-NEAR_POLE_DEG = 89.999
+NEAR_POLE_DEG = 89.9
 
 
 class GroundKind(StrEnum):
@@ -233,14 +239,39 @@ def areal_scale(crs: pyproj.CRS, area: tuple[FloatArray, FloatArray]) -> tuple[f
     -------
     (float, float) or None
         None where the CRS has no place for any of the points.
+
+    Notes
+    -----
+    Taken from the projection itself by differences: what PROJ says of its factors is true to the form it has, and of
+    some projections it has only the sphere's.
     """
-    try:
-        factors = pyproj.Proj(crs).get_factors(*area, errcheck=False)
-    except ProjError:
+    shape = crs.ellipsoid
+    if shape is None or not len(area[0]):
         return None
-    scale = np.asarray(factors.areal_scale)
-    scale = scale[np.isfinite(scale) & (np.abs(scale) < 1e10)]
+    projection = pyproj.Proj(crs)
+    unit_m = crs.axis_info[0].unit_conversion_factor
+    longitude, latitude = (np.radians(values) for values in area)
+    east, west = (
+        _projected(projection, longitude + STEP_RAD, latitude),
+        _projected(projection, longitude - STEP_RAD, latitude),
+    )
+    north, south = (
+        _projected(projection, longitude, latitude + STEP_RAD),
+        _projected(projection, longitude, latitude - STEP_RAD),
+    )
+    with np.errstate(invalid="ignore"):
+        drawn = (east[0] - west[0]) * (north[1] - south[1]) - (east[1] - west[1]) * (north[0] - south[0])
+        e2 = 1.0 - (shape.semi_minor_metre / shape.semi_major_metre) ** 2
+        flatter = 1.0 - e2 * np.sin(latitude) ** 2
+        true = (2.0 * STEP_RAD * shape.semi_major_metre) ** 2 * (1.0 - e2) * np.cos(latitude) / flatter**2
+        scale = np.abs(drawn) * unit_m**2 / true
+    scale = scale[np.isfinite(scale)]
     return (float(scale.min()), float(scale.max())) if len(scale) else None
+
+
+def _projected(projection: pyproj.Proj, longitude: FloatArray, latitude: FloatArray) -> tuple[FloatArray, FloatArray]:
+    x, y = projection(longitude, latitude, radians=True)
+    return np.where(np.abs(x) < FARTHEST_M, x, np.nan), np.where(np.abs(y) < FARTHEST_M, y, np.nan)
 
 
 def layer_grid(crs: pyproj.CRS, bounds: Bounds | None) -> tuple[FloatArray, FloatArray]:

@@ -119,14 +119,24 @@ def _rings(part: shapely.Geometry) -> list[Ring]:
 
 
 def _unwrap_ring(ring: Ring) -> Ring:
+    ring = _without_turns_at_pole(ring)
     step = np.diff(ring[:, 0])
     shortest = step - _WHOLE * np.round(step / _WHOLE)
     at_seam = (np.abs(ring[:-1, 0]) == _HALF) & (np.abs(ring[1:, 0]) == _HALF)
-    along_pole = (np.abs(ring[:-1, 1]) == _POLE) & (np.abs(ring[1:, 1]) == _POLE)
-    round_the_world = at_seam & (np.abs(step) == _WHOLE) & (ring[:-1, 1] == ring[1:, 1]) & ~along_pole
+    round_the_world = at_seam & (np.abs(step) == _WHOLE) & (ring[:-1, 1] == ring[1:, 1])
     shortest[round_the_world] = step[round_the_world]
     longitude = np.concatenate((ring[:1, 0], ring[0, 0] + np.cumsum(shortest)))
     return np.column_stack((longitude, ring[:, 1]))
+
+
+def _without_turns_at_pole(ring: Ring) -> Ring:
+    """Give vertices at a pole, which have any longitude, that of the vertex before them."""
+    at_pole = np.abs(ring[:, 1]) == _POLE
+    if not at_pole.any() or at_pole.all():
+        return ring
+    before = np.maximum.accumulate(np.where(at_pole, -1, np.arange(len(ring))))
+    before = np.where(before < 0, int(np.argmin(at_pole)), before)
+    return np.column_stack((ring[before, 0], ring[:, 1]))
 
 
 def _middle(ring: Ring) -> float:

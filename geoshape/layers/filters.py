@@ -90,7 +90,7 @@ def check_where(path: str, schema: pa.Schema, where: str) -> None:
 
 
 def meets_box(geometry: pa.BinaryArray, bbox: Bounds) -> BoolArray:
-    """Say whose envelope meets a box.
+    """Say which geometries have a point in common with a box, as GDAL's spatial filter does.
 
     Parameters
     ----------
@@ -103,10 +103,21 @@ def meets_box(geometry: pa.BinaryArray, bbox: Bounds) -> BoolArray:
         False for null, empty and unreadable geometries.
     """
     wkb = np.asarray(geometry.to_numpy(zero_copy_only=False), dtype=object)
-    bounds = shapely.bounds(shapely.from_wkb(wkb, on_invalid="ignore"))
+    shapes = shapely.from_wkb(wkb, on_invalid="ignore")
+    bounds = shapely.bounds(shapes)
     x_min, y_min, x_max, y_max = bbox
     # NaN of an empty geometry compares as false.
-    return np.asarray(
-        (bounds[:, 0] <= x_max) & (bounds[:, 2] >= x_min) & (bounds[:, 1] <= y_max) & (bounds[:, 3] >= y_min),
-        dtype=np.bool_,
-    )
+    near = (bounds[:, 0] <= x_max) & (bounds[:, 2] >= x_min) & (bounds[:, 1] <= y_max) & (bounds[:, 3] >= y_min)
+    inside = (bounds[:, 0] >= x_min) & (bounds[:, 2] <= x_max) & (bounds[:, 1] >= y_min) & (bounds[:, 3] <= y_max)
+    doubtful = np.flatnonzero(near & ~inside)
+    box = shapely.box(*bbox)
+    near[doubtful] = [_meets(shape, box) for shape in shapes[doubtful]]
+    return np.asarray(near, dtype=np.bool_)
+
+
+def _meets(shape: shapely.Geometry, box: shapely.Geometry) -> bool:
+    try:
+        return bool(shapely.intersects(shape, box))
+    except shapely.GEOSException:
+        # An invalid geometry: its envelope has to do.
+        return True

@@ -72,7 +72,7 @@ class LayerInfo:
     where : str or None
         SQL condition on the attributes.
     bbox : (x_min, y_min, x_max, y_max) or None
-        Only rows whose geometry's envelope meets it.
+        Only rows whose geometry has a point in common with it.
     warnings : tuple of str
         What the driver complained of while opening.
     rows_per_read : int

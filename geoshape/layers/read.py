@@ -50,10 +50,12 @@ def list_layers(path: str | os.PathLike[str]) -> tuple[LayerSummary, ...]:
     >>> [layer.name for layer in list_layers("tests/data/world_geodesic_area/world.gpkg")]
     ['world']
     """
-    return tuple(entry.summary for entry in _entries(os.fspath(path)))
+    text = os.fspath(path)
+    return tuple(vector_reader.counted(text, entry.source, entry.summary) for entry in _entries(text))
 
 
 def _entries(path: str) -> list[_Entry]:
+    """List layers without counting their rows, which would mean to open each of them."""
     entries = []
     for source in data_sets(path):
         found = parquet_reader.summaries(path, source) if is_parquet(source) else vector_reader.summaries(path, source)
@@ -79,7 +81,7 @@ def open_layer(
     where : str or None
         Condition on the attributes, in SQL as GDAL takes it for the format.
     bbox : (x_min, y_min, x_max, y_max) or None
-        Read only rows whose geometry's envelope meets it, in the layer's CRS.
+        Read only rows whose geometry has a point in common with it, in the layer's CRS.
 
     Returns
     -------

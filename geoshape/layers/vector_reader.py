@@ -2,9 +2,11 @@
 
 from __future__ import annotations
 
+import math
 import warnings
 from collections.abc import Iterable, Iterator
 from contextlib import contextmanager
+from dataclasses import replace
 from pathlib import Path
 from typing import Any, Self
 
@@ -13,7 +15,7 @@ import pyogrio
 import pyproj
 from pyogrio.raw import open_arrow
 
-from geoshape.errors import ReadError
+from geoshape.errors import GeoshapeWarning, ReadError
 from geoshape.layers.attributes import is_wkb_field, plain_array, plain_field
 from geoshape.layers.layer import Bounds, LayerInfo, LayerSummary
 from geoshape.layers.recut import Rows
@@ -28,7 +30,7 @@ _MEASURED = "Measured (M) geometry types are not supported"
 # Warnings that pyogrio ascribes to its caller.
 _FROM_PYOGRIO = (_MEASURED, "'crs' was not provided")
 # Names that GeoPackage (OGC 12-128r19, clause 1.1.2.1.2) and GDAL give to the absence of a CRS.
-_NO_CRS = frozenset({"undefined cartesian srs", "undefined geographic srs", "undefined srs", "unknown"})
+_NO_CRS = frozenset({"undefined cartesian srs", "undefined geographic srs", "undefined srs"})
 # GDAL's own Arrow reader of this format forgets to close the offsets of rows without geometry.
 _BROKEN_NULLS = {"FlatGeobuf": "OGR_FLATGEOBUF_STREAM_BASE_IMPL"}
 _SQL_DRIVERS = frozenset({"GPKG", "SQLite"})
@@ -85,6 +87,7 @@ def summaries(path: str, source: str) -> tuple[LayerSummary, ...]:
     Returns
     -------
     tuple of LayerSummary
+        Without the number of rows.
 
     Raises
     ------
@@ -94,15 +97,22 @@ def summaries(path: str, source: str) -> tuple[LayerSummary, ...]:
     try:
         with quiet():
             rows = pyogrio.list_layers(source)
-            return tuple(_summary(source, str(name), kind) for name, kind in rows)
     except Failure as error:
         raise _open_failure(path, error) from None
+    types = [None if kind is None else str(GeometryType.parse(str(kind))) for _, kind in rows]
+    return tuple(LayerSummary(str(name), kind, None) for (name, _), kind in zip(rows, types, strict=True))
 
 
-def _summary(source: str, name: str, kind: str | None) -> LayerSummary:
-    count = None if kind is None else pyogrio.read_info(source, layer=name)["features"]
-    geometry_type = None if kind is None else str(GeometryType.parse(str(kind)))
-    return LayerSummary(name, geometry_type, count if count is not None and count >= 0 else None)
+def counted(path: str, source: str, summary: LayerSummary) -> LayerSummary:
+    """Add the number of rows to what is known of a layer, where the driver knows it without counting."""
+    if summary.row_count is not None or summary.geometry_type is None:
+        return summary
+    try:
+        with quiet():
+            count = int(pyogrio.read_info(source, layer=summary.name)["features"])
+    except Failure as error:
+        raise _open_failure(path, error) from None
+    return replace(summary, row_count=count if count >= 0 else None)
 
 
 def describe(path: str, source: str, layer: str, where: str | None, bbox: Bounds | None) -> LayerInfo:
@@ -141,7 +151,6 @@ def describe(path: str, source: str, layer: str, where: str | None, bbox: Bounds
     kind = GeometryType.parse(str(info["geometry_type"]))
     is_measured = any(_MEASURED in text for text in texts)
     is_open = kind.base == "Unknown"
-    bounds = info["total_bounds"]
     features = int(info["features"])
     kind = GeometryType(kind.base, kind.has_z, is_measured or kind.has_m)
     return LayerInfo(
@@ -156,7 +165,7 @@ def describe(path: str, source: str, layer: str, where: str | None, bbox: Bounds
         geometry_name=info["geometry_name"] or "",
         fid_column=info["fid_column"] or "",
         row_count=features if features >= 0 and where is None and bbox is None else None,
-        bounds=None if bounds is None else _four(bounds),
+        bounds=_extent(info["total_bounds"], features),
         schema=schema,
         where=where,
         bbox=bbox,
@@ -165,7 +174,9 @@ def describe(path: str, source: str, layer: str, where: str | None, bbox: Bounds
     )
 
 
-def _four(values: Any) -> Bounds:
+def _extent(values: tuple[float, ...] | None, features: int) -> Bounds | None:
+    if values is None or features == 0 or not all(map(math.isfinite, values)):
+        return None
     x_min, y_min, x_max, y_max = (float(value) for value in values)
     return x_min, y_min, x_max, y_max
 
@@ -299,6 +310,7 @@ class _Reader:
 
     def __init__(self, info: LayerInfo) -> None:
         self._info = info
+        self._said = set(info.warnings)
         self.geometry_name = _DEFAULT_GEOMETRY_NAME
 
     def __enter__(self) -> Self:
@@ -324,13 +336,18 @@ class _Reader:
 
     def next_batch(self, done: int) -> pa.RecordBatch | None:
         """Read the next batch; None at the end."""
-        with quiet():
+        with quiet() as texts:
             try:
-                return self._batches.read_next_batch()
+                batch = self._batches.read_next_batch()
             except StopIteration:
-                return None
+                batch = None
             except Failure as error:
                 raise _damage(self._info, done, one_line(error)) from None
+        for text in texts:
+            if text not in self._said:
+                self._said.add(text)
+                warnings.warn(f"{self._info.path}: {text}", GeoshapeWarning, stacklevel=2)
+        return batch
 
 
 @contextmanager
