@@ -61,6 +61,7 @@ EMPTY = [[], [[]], [[], [], []]]
 
 class TestLayout:
     @given(any_features)
+    @settings(max_examples=40)
     def test_counts_and_owners(self, features):
         batch = batch_from(features)
         rings = [(f, ring) for f, parts in enumerate(features) for part in parts for ring in part]
@@ -73,6 +74,7 @@ class TestLayout:
         assert batch.vertex_ring.tolist() == [i for i, (_, ring) in enumerate(rings) for _ in ring]
 
     @given(any_features)
+    @settings(max_examples=40)
     def test_following_vertices(self, features):
         batch = batch_from(features)
         following = [p for parts in features for part in parts for ring in part for p in [*ring[1:], ring[0]]]
@@ -80,6 +82,7 @@ class TestLayout:
         assert batch.next_y.tolist() == [y for _, y in following]
 
     @given(any_features)
+    @settings(max_examples=40)
     def test_sums(self, features):
         batch = batch_from(features)
         values = np.arange(batch.n_vertices, dtype=float) ** 2
@@ -113,7 +116,7 @@ class TestLayout:
 
 class TestAreas:
     @given(any_features)
-    @settings(max_examples=50)
+    @settings(max_examples=25)
     def test_signed_area(self, features):
         found = batch_from(features).ring_signed_area
         expected = [float(naive.signed_area(ring)) for parts in features for part in parts for ring in part]
@@ -124,7 +127,7 @@ class TestAreas:
         assert batch_from([[[far]]]).ring_signed_area.tolist() == [3.0]
 
     @given(solid)
-    @settings(max_examples=50)
+    @settings(max_examples=25)
     def test_planar_centroid(self, features):
         found = oriented(batch_from(features)).planar_centroid
         for at, parts in enumerate(features):
@@ -176,7 +179,7 @@ class TestWithoutRepeats:
     @given(any_features)
     @example([[[[(0, 0), (1, 0), (1, 1), (0, 0), (0, 0), (0, 0)]]]])
     @example([[[[(0, 0), (0, 0), (1, 0), (1, 0), (1, 1), (0, 0)]]]])
-    @settings(max_examples=200)
+    @settings(max_examples=150)
     def test_is_the_loop(self, features):
         expected = []
         part_number = 0
@@ -225,6 +228,7 @@ class TestOutlines:
 
 class TestMoves:
     @given(any_features)
+    @settings(max_examples=40)
     def test_recentred(self, features):
         batch = batch_from(features)
         shift = np.arange(2.0 * len(features)).reshape(-1, 2)
@@ -234,6 +238,7 @@ class TestMoves:
         assert np.array_equal(moved.origin, shift)
 
     @given(any_features, st.integers(0, 2**12 - 1))
+    @settings(max_examples=40)
     def test_take_rings(self, features, bits):
         batch = batch_from(features)
         keep = np.array([bool(bits >> (i % 12) & 1) for i in range(batch.n_rings)], dtype=bool)
@@ -257,7 +262,7 @@ class TestMoves:
 
 
 @given(st.lists(st.one_of(st.none(), strategies.polygons()), max_size=4))
-@settings(max_examples=50)
+@settings(max_examples=25)
 def test_batch_of_geometries_is_the_loop(polygons):
     array = np.empty(len(polygons), dtype=object)
     array[:] = polygons

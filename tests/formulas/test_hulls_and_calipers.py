@@ -73,20 +73,20 @@ def test_slivers(polygon):
 
 
 @given(strategies.lattice())
-@settings(max_examples=50)
+@settings(max_examples=35)
 def test_squares_of_a_grid(polygon):
     assert_all(polygon)
 
 
 @given(strategies.lattice(), strategies.angles_deg())
-@settings(max_examples=50)
+@settings(max_examples=35)
 def test_squares_of_a_turned_grid(polygon, angle):
     """Turned, the points on a side are no longer exactly on one line."""
     assert_all(affinity.rotate(polygon, angle, origin=(0, 0)))
 
 
 @given(st.integers(2, 40), st.integers(0, 359), st.sampled_from((1.0, 0.1, 7.3)))
-@settings(max_examples=100)
+@settings(max_examples=60)
 def test_squares_in_a_turned_row(n, angle, gap):
     polygon = row_of_squares(n, angle, gap)
     length = n + (n - 1) * gap
@@ -206,7 +206,7 @@ def test_no_features():
     st.sampled_from((1e-3, 1e-4, 1e-5, 1e-6)),
     strategies.angles_deg(),
 )
-@settings(max_examples=100)
+@settings(max_examples=60)
 def test_circle_of_thin_hulls(points, flatness, angle):
     ring = shapes.turned([(x / 2.0, y * flatness / 2.0) for x, y in points], angle)
     hull = MultiPoint(ring).convex_hull

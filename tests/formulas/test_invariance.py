@@ -30,7 +30,7 @@ def not_spectrum(row):
     return {name: value for name, value in row.items() if not name.startswith("fd_")}
 
 
-examples = settings(max_examples=30)
+examples = settings(max_examples=20)
 
 
 @given(strategies.polygons(), st.integers(1, 17))
@@ -134,7 +134,7 @@ def test_order_of_parts_and_holes(polygon, order):
 
 
 @given(st.lists(st.one_of(st.none(), strategies.polygons()), max_size=6))
-@settings(max_examples=30)
+@settings(max_examples=20)
 def test_a_batch_is_its_features_one_by_one(polygons):
     together = columns_of(*polygons)
     for at, polygon in enumerate(polygons):
@@ -146,7 +146,7 @@ def test_a_batch_is_its_features_one_by_one(polygons):
 
 
 @given(strategies.polygons(), st.integers(1, 17))
-@settings(max_examples=30)
+@settings(max_examples=20)
 def test_first_vertex_with_samples(polygon, step):
     """256 samples stand elsewhere on the outline when it begins elsewhere: amplitudes change in the fourth digit."""
     other = rebuilt(polygon, lambda ring: ring[step % len(ring) :] + ring[: step % len(ring)])

@@ -40,7 +40,7 @@ def test_raw_moments_of_shapes(shape):
 
 
 @given(strategies.polygons())
-@settings(max_examples=30)
+@settings(max_examples=25)
 def test_raw_moments(polygon):
     raw = moments.raw_moments(batch_of(polygon, local_origin=False))[0]
     reach = max(abs(c) for c in polygon.bounds)
@@ -50,7 +50,7 @@ def test_raw_moments(polygon):
 
 @given(strategies.polygons(), strategies.shifts())
 @example(shapes.SQUARE.polygon, (5_000_000, 5_000_000))
-@settings(max_examples=30)
+@settings(max_examples=25)
 def test_central_moments_far_from_the_origin(polygon, shift):
     moved = affinity.translate(polygon, *shift)
     got = central_of(moved)[0]
@@ -61,19 +61,19 @@ def test_central_moments_far_from_the_origin(polygon, shift):
 
 
 @given(strategies.polygons())
-@settings(max_examples=30)
+@settings(max_examples=25)
 def test_invariants(polygon):
     assert_invariants(invariants(polygon), naive_invariants(polygon), 1e-9)
 
 
 @given(strategies.thin())
-@settings(max_examples=30)
+@settings(max_examples=25)
 def test_invariants_of_thin_polygons(polygon):
     assert_invariants(invariants(polygon), naive_invariants(polygon), 1e-9)
 
 
 @given(strategies.polygons())
-@settings(max_examples=40)
+@settings(max_examples=25)
 def test_identities(polygon):
     row = invariants(polygon)
     product = row["hu_3"] * row["hu_4"] ** 3
@@ -87,7 +87,7 @@ def test_identities(polygon):
 
 
 @given(strategies.polygons(), strategies.angles_deg())
-@settings(max_examples=30)
+@settings(max_examples=25)
 def test_affine_invariants_bear_shear_and_stretch(polygon, angle):
     sheared = affinity.affine_transform(affinity.rotate(polygon, angle), (2.0, 0.7, -0.3, 0.5, 11.0, -7.0))
     mirrored = affinity.scale(sheared, xfact=-1)
@@ -97,7 +97,7 @@ def test_affine_invariants_bear_shear_and_stretch(polygon, angle):
 
 
 @given(strategies.polygons())
-@settings(max_examples=40)
+@settings(max_examples=25)
 def test_axes_are_the_eigenvectors_of_the_second_moments(polygon):
     found = axes.principal_axes(central_of(polygon))
     major, minor, strength, azimuth = naive.principal_axes(naive.central_moments(naive.parts_of(polygon)))

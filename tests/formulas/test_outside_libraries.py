@@ -29,7 +29,7 @@ def contour(polygon):
 
 class TestOpenCv:
     @given(strategies.stars())
-    @settings(max_examples=50)
+    @settings(max_examples=25)
     def test_raw_moments(self, polygon):
         """Contour moments, in double precision inside; their sign follows the ring's direction."""
         found = cv2.moments(contour(shapely.orient_polygons(polygon)))
@@ -45,7 +45,7 @@ class TestOpenCv:
         assert [row[f"hu_{i}"] for i in range(1, 8)] == pytest.approx(found.tolist(), rel=1e-9, abs=1e-18)
 
     @given(strategies.stars())
-    @settings(max_examples=50)
+    @settings(max_examples=25)
     def test_hu_moments_of_stars(self, polygon):
         found = cv2.HuMoments(cv2.moments(contour(polygon))).ravel()
         row = row_of(polygon)
@@ -55,7 +55,7 @@ class TestOpenCv:
             assert abs(row[f"hu_{i + 1}"] - found[i]) <= 1e-9 * scale[i], i + 1
 
     @given(strategies.stars())
-    @settings(max_examples=50)
+    @settings(max_examples=25)
     def test_smallest_circle(self, polygon):
         """In single precision, and OpenCV widens its circle a little."""
         _, radius = cv2.minEnclosingCircle(contour(polygon))
@@ -63,7 +63,7 @@ class TestOpenCv:
         assert circle.radius[0] == pytest.approx(radius, rel=2e-5)
 
     @given(strategies.stars())
-    @settings(max_examples=50)
+    @settings(max_examples=25)
     def test_smallest_rectangle(self, polygon):
         """Single precision throughout."""
         _, (width, height), _ = cv2.minAreaRect(contour(polygon))
@@ -73,7 +73,7 @@ class TestOpenCv:
 
 class TestShapely:
     @given(strategies.polygons())
-    @settings(max_examples=60)
+    @settings(max_examples=25)
     def test_circle_rectangle_hull(self, polygon):
         batch = batch_of(polygon)
         hull = hulls.convex_hulls(batch)
@@ -87,7 +87,7 @@ class TestShapely:
         assert spans.rectangle_area[0] == pytest.approx(shapely.minimum_rotated_rectangle(local).area, rel=1e-8)
 
     @given(strategies.polygons())
-    @settings(max_examples=60)
+    @settings(max_examples=25)
     def test_area_perimeter_centroid(self, polygon):
         row = row_of(polygon)
         assert row["area_m2"] == pytest.approx(polygon.area, rel=1e-12)

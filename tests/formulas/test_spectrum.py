@@ -44,7 +44,7 @@ def at(coefficients, k):
 
 class TestResample:
     @given(strategies.polygons(), st.sampled_from((16, 37, 256)))
-    @settings(max_examples=30)
+    @settings(max_examples=20)
     def test_walks_the_outline(self, polygon, n):
         rings = outline_of(polygon)
         points = arclength.resample(rings, n)[0]
@@ -53,7 +53,7 @@ class TestResample:
         ).max() + 1e-12 * max(abs(c) for c in polygon.bounds)
 
     @given(st.lists(strategies.polygons(), min_size=2, max_size=5))
-    @settings(max_examples=30)
+    @settings(max_examples=20)
     def test_a_batch_is_its_features_one_by_one(self, polygons):
         together = arclength.resample(outline_of(*polygons), 64)
         alone = [arclength.resample(outline_of(polygon), 64)[0] for polygon in polygons]
@@ -158,7 +158,7 @@ class TestCoefficients:
         assert abs(at(exact(Polygon(shapes.regular(n))), 1)) == pytest.approx(first, rel=1e-13)
 
     @given(strategies.stars())
-    @settings(max_examples=30)
+    @settings(max_examples=20)
     def test_sampled_is_close_to_exact_and_converges(self, polygon):
         true = exact(polygon)
         size = abs(at(true, 1))
@@ -170,7 +170,7 @@ class TestCoefficients:
         assert errors[1] <= errors[0] / 16 + 1e-12 * size
 
     @given(strategies.stars())
-    @settings(max_examples=30)
+    @settings(max_examples=20)
     def test_reversing_swaps_k_and_minus_k(self, polygon):
         rings = outline_of(polygon)
         index = np.concatenate(([0], np.arange(rings.n_vertices - 1, 0, -1)))
@@ -182,14 +182,14 @@ class TestCoefficients:
         assert np.abs(there[::-1] - back).max() <= 1e-11 * abs(at(there, 1))
 
     @given(strategies.stars(), strategies.angles_deg())
-    @settings(max_examples=30)
+    @settings(max_examples=20)
     def test_turning_turns_only_phases(self, polygon, angle):
         c = exact(polygon)
         other = exact(affinity.rotate(polygon, angle, origin=(0, 0)))
         assert np.abs(other - c * cmath.exp(1j * pi * angle / 180)).max() <= 1e-11 * abs(at(c, 1))
 
     @given(strategies.stars(), st.integers(1, 20))
-    @settings(max_examples=30)
+    @settings(max_examples=20)
     def test_first_vertex_turns_only_phases(self, polygon, step):
         rings = outline_of(polygon)
         step %= rings.n_vertices
@@ -201,7 +201,7 @@ class TestCoefficients:
         assert np.abs(other - c * phase).max() <= 1e-11 * abs(at(c, 1))
 
     @given(strategies.stars())
-    @settings(max_examples=30)
+    @settings(max_examples=20)
     def test_reflection_conjugates(self, polygon):
         """The mirror image of the walk has the conjugate of c_-k for its c_k."""
         rings = outline_of(polygon)
@@ -210,7 +210,7 @@ class TestCoefficients:
         assert np.abs(other - c.conj()[::-1]).max() <= 1e-11 * abs(at(c, 1))
 
     @given(strategies.polygons())
-    @settings(max_examples=30)
+    @settings(max_examples=20)
     def test_reflection_keeps_amplitudes(self, polygon):
         exactly = MeasureOptions(spectrum=Spectrum.EXACT)
         row = row_of(polygon, exactly, SPECTRUM_ONLY)
@@ -218,7 +218,7 @@ class TestCoefficients:
         assert other == pytest.approx(row, rel=1e-9, abs=1e-12)
 
     @given(strategies.stars(), st.integers(1, 12))
-    @settings(max_examples=40)
+    @settings(max_examples=20)
     @example(Polygon(shapes.rectangle(2, 1)), 3)
     def test_coefficients_of_kuhl_and_giardina(self, polygon, n):
         rings = outline_of(polygon)
@@ -248,7 +248,7 @@ class TestCoefficients:
         assert (a, b, c, d) == pytest.approx(printed, abs=5e-9)
 
     @given(strategies.stars(), st.integers(1, 30))
-    @settings(max_examples=30)
+    @settings(max_examples=20)
     def test_exact_does_not_depend_on_the_first_vertex_or_on_inserted_ones(self, polygon, step):
         exactly = MeasureOptions(spectrum=Spectrum.EXACT)
         corners = list(polygon.exterior.coords)[:-1]
@@ -260,7 +260,7 @@ class TestCoefficients:
             assert row_of(Polygon(ring), exactly, SPECTRUM_ONLY) == pytest.approx(row, rel=1e-10, abs=1e-12)
 
     @given(strategies.stars(), st.integers(1, 30))
-    @settings(max_examples=30)
+    @settings(max_examples=20)
     def test_sampled_depends_on_the_first_vertex_only_a_little(self, polygon, step):
         corners = list(polygon.exterior.coords)[:-1]
         step %= len(corners)
