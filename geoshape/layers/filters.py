@@ -11,8 +11,9 @@ import pyarrow.types as pt
 import shapely
 from pyogrio.raw import read_arrow, write_arrow
 
+from geoshape.layers.complaints import Failure, quiet
 from geoshape.layers.layer import Bounds
-from geoshape.layers.vector_reader import Failure, quiet, where_error
+from geoshape.layers.vector_info import where_error
 from geoshape.rings import BoolArray
 
 _ROW = "geoshape_row_number"

@@ -11,7 +11,7 @@ from collections.abc import Iterator
 from dataclasses import dataclass, replace
 
 from geoshape.errors import LayerChoiceError, OptionError
-from geoshape.layers import parquet_reader, vector_reader
+from geoshape.layers import parquet_reader, vector_info, vector_reader
 from geoshape.layers.layer import Bounds, LayerBatch, LayerInfo, LayerSummary
 from geoshape.layers.recut import recut
 from geoshape.layers.sources import data_sets, is_parquet
@@ -51,14 +51,14 @@ def list_layers(path: str | os.PathLike[str]) -> tuple[LayerSummary, ...]:
     ['world']
     """
     text = os.fspath(path)
-    return tuple(vector_reader.counted(text, entry.source, entry.summary) for entry in _entries(text))
+    return tuple(vector_info.counted(text, entry.source, entry.summary) for entry in _entries(text))
 
 
 def _entries(path: str) -> list[_Entry]:
     """List layers without counting their rows, which would mean to open each of them."""
     entries = []
     for source in data_sets(path):
-        found = parquet_reader.summaries(path, source) if is_parquet(source) else vector_reader.summaries(path, source)
+        found = parquet_reader.summaries(path, source) if is_parquet(source) else vector_info.summaries(path, source)
         entries += [_Entry(source, summary) for summary in found]
     return entries
 
@@ -108,7 +108,7 @@ def open_layer(
         _check_bbox(bbox)
     entries = _entries(text)
     chosen = _choose(text, entries, layer)
-    describe = parquet_reader.describe if is_parquet(chosen.source) else vector_reader.describe
+    describe = parquet_reader.describe if is_parquet(chosen.source) else vector_info.describe
     info = describe(text, chosen.source, chosen.summary.name, where, bbox)
     return replace(info, layer_names=tuple(entry.summary.name for entry in entries))
 

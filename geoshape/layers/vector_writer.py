@@ -9,12 +9,12 @@ from typing import Any
 import pyarrow as pa
 from pyogrio.raw import write_arrow
 
+from geoshape.layers.complaints import quiet
 from geoshape.layers.formats import FLATGEOBUF, GEOPACKAGE, SHAPEFILE
 from geoshape.layers.names import free_name
 from geoshape.layers.plan import OutputPlan
 from geoshape.layers.rfc7946 import LongitudeLatitude
 from geoshape.layers.shapefile import shape_type
-from geoshape.layers.vector_reader import quiet
 from geoshape.layers.wkb import GeometryType
 
 Rows = tuple[list[pa.Array], pa.BinaryArray]

@@ -14,6 +14,7 @@ from pathlib import Path
 import pyarrow as pa
 
 from geoshape.errors import WriteError
+from geoshape.layers.complaints import one_line
 from geoshape.layers.csv_writer import write_csv
 from geoshape.layers.formats import CSV, FLATGEOBUF, GEOPACKAGE, GEOPARQUET, SHAPEFILE
 from geoshape.layers.lineage import Lineage, lineage_path, store_in_geopackage
@@ -24,7 +25,7 @@ from geoshape.layers.shapefile import CROSSWALK_SUFFIX, declare_numbers, write_c
 from geoshape.layers.shapes import ShapeFit, written_type
 from geoshape.layers.staging import copy_database, has_room, publish, staged
 from geoshape.layers.storage import Losses, is_dbf_number, loss_texts, stored_arrays, stored_schema
-from geoshape.layers.vector_reader import is_whole, one_line
+from geoshape.layers.vector_reader import is_whole
 from geoshape.layers.vector_writer import write_vector
 from geoshape.layers.wkb import GeometryType
 

@@ -14,7 +14,7 @@ import shapely
 from pyogrio.raw import read_arrow
 
 from geoshape.errors import ReadError
-from geoshape.layers.filters import Filter
+from geoshape.layers.filters import Filter, meets_box
 from geoshape.layers.plan import plan_output
 from geoshape.layers.read import list_layers, open_layer, read_batches
 from geoshape.layers.write import OutputBatch, write_batches
@@ -143,11 +143,41 @@ def test_bbox(tmp_path: Path, counties: gpd.GeoDataFrame, covering: bool) -> Non
     counties.to_parquet(path, write_covering_bbox=covering, row_group_size=20)
     bbox = (-110, 37, -108, 39)
     table, _ = rows_of(path, bbox=bbox)
-    bounds = counties.bounds
-    meets = (bounds.minx <= -108) & (bounds.maxx >= -110) & (bounds.miny <= 39) & (bounds.maxy >= 37)
+    meets = counties.intersects(shapely.box(*bbox))
     assert table.column("GEOID").to_pylist() == counties.GEOID[meets].tolist()
     with_where, _ = rows_of(path, bbox=bbox, where="STATEFP = '08'")
     assert with_where.column("GEOID").to_pylist() == counties.GEOID[meets & (counties.STATEFP == "08")].tolist()
+
+
+SLANTED = [
+    # An envelope that meets the box, a geometry that does not; one that touches it; one in it; one round it.
+    ("POLYGON ((0 0, 10 0, 10 1, 1 1, 1 10, 0 10, 0 0))", False),
+    ("POLYGON ((6 6, 8 6, 8 8, 6 6))", True),
+    ("POLYGON ((5.2 5.2, 5.8 5.2, 5.8 5.8, 5.2 5.2))", True),
+    ("POLYGON ((0 0, 20 0, 20 20, 0 20, 0 0))", True),
+    ("POLYGON ((0 0, 20 0, 20 20, 0 20, 0 0), (1 1, 1 19, 19 19, 19 1, 1 1))", False),
+    ("POLYGON ((5.5 5, 9 9, 5.5 9, 9 5, 5.5 5))", True),
+    (None, False),
+    (samples.EMPTY, False),
+]
+
+
+@pytest.mark.parametrize("suffix", [".parquet", ".gpkg", ".fgb", ".shp", ".geojson"])
+def test_bbox_means_the_same_in_every_format(tmp_path: Path, suffix: str) -> None:
+    path = tmp_path / f"a{suffix}"
+    plan = plan_output(path, samples.plain_content("Polygon", pyproj.CRS("EPSG:4326").to_wkt()))
+    write_batches(plan, [samples.numbered(*[text for text, _ in SLANTED])])
+    table, _ = rows_of(path, bbox=(5, 5, 6, 6))
+    assert table.column("row").to_pylist() == [i for i, (_, meets) in enumerate(SLANTED) if meets]
+
+
+def test_box_and_a_geometry_that_geos_refuses(monkeypatch: pytest.MonkeyPatch) -> None:
+    def refuse(*_: object) -> None:
+        raise shapely.GEOSException("TopologyException")
+
+    monkeypatch.setattr(shapely, "intersects", refuse)
+    wkb = samples.wkb("POLYGON ((0 0, 9 9, 0 9, 9 0, 0 0))", samples.POLYGON)
+    assert meets_box(wkb, (3, 3, 4, 4)).tolist() == [True, False]
 
 
 def test_bbox_skips_row_groups(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:

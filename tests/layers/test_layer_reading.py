@@ -10,6 +10,7 @@ from pathlib import Path
 
 import pyarrow as pa
 import pyogrio
+import pyproj
 import pytest
 import shapely
 from pyogrio.raw import read_arrow, write_arrow
@@ -153,16 +154,35 @@ def test_where_as_the_driver_takes_it() -> None:
         assert info.row_count is None
 
 
-def test_bbox_meets_envelopes() -> None:
-    info = open_layer(samples.COUNTIES, bbox=(-110, 37, -108, 39))
-    table, geometry = table_of(info)
+def test_bbox_meets_geometries() -> None:
+    bbox = (-110, 37, -108, 39)
+    table, geometry = table_of(open_layer(samples.COUNTIES, bbox=bbox))
     every, shapes = table_of(open_layer(samples.COUNTIES))
-    bounds = shapely.bounds(shapely.from_wkb(shapes))
-    meets = (bounds[:, 0] <= -108) & (bounds[:, 2] >= -110) & (bounds[:, 1] <= 39) & (bounds[:, 3] >= 37)
+    meets = shapely.intersects(shapely.from_wkb(shapes), shapely.box(*bbox))
     assert table.column("GEOID").to_pylist() == [
         value for value, is_met in zip(every.column("GEOID").to_pylist(), meets, strict=True) if is_met
     ]
     assert 0 < len(geometry) < len(shapes)
+
+
+def test_a_crs_without_a_name_is_one(tmp_path: Path) -> None:
+    crs = pyproj.CRS("+proj=laea +lat_0=10 +lon_0=20")
+    assert crs.name == "unknown"
+    for suffix in (".gpkg", ".parquet", ".fgb", ".shp"):
+        info = open_layer(make(tmp_path / f"a{suffix}", crs=crs.to_wkt()))
+        assert info.crs_wkt is not None
+        operation = pyproj.CRS(info.crs_wkt).coordinate_operation
+        assert [parameter.value for parameter in operation.params][:2] == [10, 20]
+
+
+def test_what_the_driver_complains_of_is_passed_on_once(tmp_path: Path) -> None:
+    path = tmp_path / "a.csv"
+    path.write_text('a,WKT\n1,"POLYGON ((0 0,1 0,1 1,0 0))"\n' + '2,"POLYGON ((0 0,1 0"\n' * 3000)
+    info = open_layer(path)
+    with pytest.warns(GeoshapeWarning) as said:
+        _, geometry = table_of(info)
+    assert [str(item.message) for item in said] == [f"{path}: Ignoring invalid WKT: POLYGON ((0 0,1 0"]
+    assert sum(value is None for value in geometry) == 3000
 
 
 @pytest.mark.parametrize("bbox", [(1, 0, 0, 1), (0, 1, 1, 0), (0, 0, 1, float("nan")), (0, 0, 1)])

@@ -4,6 +4,7 @@ import csv
 import json
 import sqlite3
 import warnings
+from collections.abc import Iterator
 from pathlib import Path
 
 import pyarrow as pa
@@ -14,6 +15,7 @@ import pytest
 import shapely
 from pyogrio.raw import read_arrow
 
+from geoshape.errors import GroundWarning
 from geoshape.layers.lineage import read_lineage
 from geoshape.layers.read import open_layer, read_batches
 from geoshape.layers.write import OutputBatch, OutputResult, plan_output, write_batches
@@ -572,3 +574,29 @@ def test_real_layer_through_every_format(tmp_path: Path) -> None:
         assert geometry is not None
         assert shapely.equals(shapely.from_wkb(geometry), shapes).all(), suffix
         assert open_layer(path).crs_wkt is not None
+
+
+@pytest.mark.parametrize("suffix", [".gpkg", ".parquet"])
+def test_warnings_of_the_producer_come_through(tmp_path: Path, suffix: str) -> None:
+    plan = plan_output(tmp_path / f"a{suffix}", samples.plain_content("Polygon", UTM))
+
+    def batches() -> Iterator[OutputBatch]:
+        for i in range(3):
+            warnings.warn("bends a little", GroundWarning, stacklevel=1)
+            warnings.warn("all is nothing", RuntimeWarning, stacklevel=1)
+            yield samples.numbered(samples.POLYGON, first=i)
+
+    with pytest.warns() as said:
+        result = write_batches(plan, batches())
+    assert {(item.category, str(item.message)) for item in said} == {
+        (GroundWarning, "bends a little"),
+        (RuntimeWarning, "all is nothing"),
+    }
+    assert result.warnings == ()
+
+
+def test_what_the_driver_complains_of_is_in_the_result(tmp_path: Path) -> None:
+    plan = plan_output(tmp_path / "a.gpkg", samples.plain_content("Polygon", UTM))
+    result = write_batches(plan, [samples.numbered(samples.MULTI, samples.MULTI)])
+    (text,) = result.warnings
+    assert text.startswith("A geometry of type MULTIPOLYGON is inserted into layer a of geometry type POLYGON")
