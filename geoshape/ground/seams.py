@@ -23,6 +23,9 @@ POLAR_STEP_DEG = 0.05
 SEAM_TOLERANCE_DEG = 1e-4
 """How far from the antimeridian, and from each other, the two ways of a detour to the pole may be."""
 
+SNAP_DEG = 2e-5
+"""How far from the antimeridian, about two metres, outlines are stored that were cut at it."""
+
 _HALF, _WHOLE, _POLE = 180.0, 360.0, 90.0
 
 
@@ -100,7 +103,7 @@ Ring = FloatArray
 def _unwrap_one(
     geometry: shapely.Geometry, ellipsoid: Ellipsoid, *, is_subdivided: bool
 ) -> tuple[shapely.Geometry, int, bool]:
-    parts = [_rings(part) for part in shapely.get_parts(geometry)]
+    parts = [[_snapped(ring) for ring in _rings(part)] for part in shapely.get_parts(geometry)]
     touching = sum(bool(np.any(np.abs(part[0][:, 0]) == _HALF)) for part in parts)
     unwrapped = [[_unwrap_ring(ring) for ring in part] for part in parts]
     turns = [round((ring[-1, 0] - ring[0, 0]) / _WHOLE) for part in unwrapped for ring in part]
@@ -116,6 +119,13 @@ def _unwrap_one(
 
 def _rings(part: shapely.Geometry) -> list[Ring]:
     return [shapely.get_coordinates(ring) for ring in shapely.get_rings(part)]
+
+
+def _snapped(ring: Ring) -> Ring:
+    """Put vertices onto the antimeridian that were cut there and stored a little beside it."""
+    longitude = ring[:, 0]
+    near = np.abs(np.abs(longitude) - _HALF) <= SNAP_DEG
+    return np.column_stack((np.where(near, np.copysign(_HALF, longitude), longitude), ring[:, 1]))
 
 
 def _unwrap_ring(ring: Ring) -> Ring:
