@@ -35,7 +35,7 @@ def measure(layer: gpd.GeoDataFrame, *, options: MeasureOptions | None = None) -
     -------
     GeoDataFrame
         The layer's rows in their order, its columns, and those that ``columns_for(options)`` lists. Null is NaN for
-        numbers, ``<NA>`` for counts and None for text. With ``parts="split"`` a row for each part, under the index of
+        numbers, and ``<NA>`` for counts and text. With ``parts="split"`` a row for each part, under the index of
         its feature.
 
     Raises
@@ -99,7 +99,13 @@ def _joined(
 
 def _series(column: Column, pieces: list[ColumnValues]) -> pd.api.extensions.ExtensionArray | np.ndarray:
     value = np.concatenate([piece[column.name] for piece in pieces])
-    return pd.array(value, dtype="Int64") if column.kind is Kind.COUNT else value
+    match column.kind:
+        case Kind.COUNT:
+            return pd.array(value, dtype="Int64")
+        case Kind.TEXT:
+            return pd.array(value, dtype="string")
+        case _:
+            return value
 
 
 def _refuse_clashes(layer: gpd.GeoDataFrame, columns: tuple[Column, ...]) -> None:
