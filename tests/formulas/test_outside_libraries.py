@@ -140,7 +140,7 @@ class TestScikitImage:
 
     @pytest.mark.parametrize(("shape", "azimuth", "_ratio"), shapes.AXES[1:], ids=lambda value: "")
     def test_orientation(self, shape, azimuth, _ratio):
-        """Its orientation t turns from the row axis, which points south, to the columns: east is sin t, north -cos t."""
+        """Its orientation t turns from the row axis (south) to the columns: east is sin t, north -cos t."""
         found = np.degrees(raster_properties(shape.polygon).orientation)
         assert angle_between(-found, azimuth) < 0.3
         measured = axes.principal_axes(central_of(shape.polygon)).azimuth_deg[0]
