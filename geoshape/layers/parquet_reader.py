@@ -10,11 +10,11 @@ from typing import Any
 import numpy as np
 import pyarrow as pa
 import pyarrow.parquet as pq
-import pyproj
 import shapely
 
 from geoshape.errors import ReadError
 from geoshape.layers.attributes import plain_array, plain_field, plain_type
+from geoshape.layers.crs import crs_wkt
 from geoshape.layers.filters import Filter, check_where, meets_box
 from geoshape.layers.layer import Bounds, LayerInfo, LayerSummary
 from geoshape.layers.recut import Rows
@@ -25,6 +25,7 @@ DRIVER = "Parquet"
 _GEO_KEY = b"geo"
 _DEFAULT_CRS = "OGC:CRS84"
 _NATIVE = {"polygon": shapely.GeometryType.POLYGON, "multipolygon": shapely.GeometryType.MULTIPOLYGON}
+_NATIVE_BASES = {"polygon": "Polygon", "multipolygon": "MultiPolygon"}
 _BYTES_PER_READ = 16_000_000
 _MAX_ROWS_PER_READ = 4096
 _WKB = "WKB"
@@ -92,7 +93,7 @@ def _primary(path: str, file: pq.ParquetFile) -> tuple[str, dict[str, Any]]:
 def _geometry_type(column: dict[str, Any]) -> GeometryType:
     kinds = [GeometryType.parse(name) for name in column.get("geometry_types", [])]
     if column["encoding"] in _NATIVE and not kinds:
-        kinds = [GeometryType.parse({"polygon": "Polygon", "multipolygon": "MultiPolygon"}[column["encoding"]])]
+        kinds = [GeometryType(_NATIVE_BASES[column["encoding"]])]
     bases = {kind.base for kind in kinds}
     has_z = any(kind.has_z for kind in kinds)
     has_m = any(kind.has_m for kind in kinds)
@@ -136,7 +137,7 @@ def describe(path: str, source: str, layer: str, where: str | None, bbox: Bounds
             source=source,
             layer=layer,
             driver=DRIVER,
-            crs_wkt=_crs_wkt(path, column),
+            crs_wkt=crs_wkt(path, column.get("crs", _DEFAULT_CRS)),
             geometry_type=str(kind),
             has_z=None if is_open and not kind.has_z else kind.has_z,
             has_m=None if is_open and not kind.has_m else kind.has_m,
@@ -156,17 +157,6 @@ def _complaints(column: dict[str, Any]) -> tuple[str, ...]:
     if column.get("edges", "planar") != "planar":
         return (f"the file says that edges are {column['edges']}; they are taken as straight in its coordinates",)
     return ()
-
-
-def _crs_wkt(path: str, column: dict[str, Any]) -> str | None:
-    crs = column.get("crs", _DEFAULT_CRS)
-    if crs is None:
-        return None
-    try:
-        return pyproj.CRS.from_user_input(crs).to_wkt()
-    except pyproj.exceptions.CRSError as error:
-        text = " ".join(str(error).split())
-        raise ReadError(f"{path}: its CRS is not understood ({text}); write the file anew") from None
 
 
 def _bounds(column: dict[str, Any]) -> Bounds | None:

@@ -3,19 +3,20 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Iterable
+from collections.abc import Iterable, Iterator
+from contextlib import contextmanager
 from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
 import pyarrow as pa
 import pyogrio
-import pyproj
 from pyogrio.raw import open_arrow
 
 from geoshape.errors import ReadError
 from geoshape.layers.attributes import is_wkb_field, plain_field
 from geoshape.layers.complaints import MEASURED, Failure, one_line, quiet
+from geoshape.layers.crs import crs_wkt
 from geoshape.layers.layer import Bounds, LayerInfo, LayerSummary
 from geoshape.layers.sources import archive_of
 from geoshape.layers.wkb import GeometryType
@@ -23,8 +24,6 @@ from geoshape.layers.wkb import GeometryType
 _BYTES_PER_READ = 16_000_000
 _MAX_ROWS_PER_READ = 4096
 _DEFAULT_ROWS_PER_READ = 1024
-# Names that GeoPackage (OGC 12-128r19, clause 1.1.2.1.2) and GDAL give to the absence of a CRS.
-_NO_CRS = frozenset({"undefined cartesian srs", "undefined geographic srs", "undefined srs"})
 _SQL_DRIVERS = frozenset({"GPKG", "SQLite"})
 
 
@@ -38,6 +37,16 @@ def open_failure(path: str, error: BaseException) -> ReadError:
             return ReadError(f"{path}: is a folder that GDAL does not take for a layer; name a file in it")
         return ReadError(f"{path}: no format that GDAL reads as a layer; check that the file is a vector layer")
     return ReadError(f"{path}: cannot be opened ({text}); check that the file is whole and not in use")
+
+
+@contextmanager
+def opening(path: str) -> Iterator[list[str]]:
+    """Collect complaints, and turn what opening a data set raises into a ReadError."""
+    with quiet() as texts:
+        try:
+            yield texts
+        except Failure as error:
+            raise open_failure(path, error) from None
 
 
 def summaries(path: str, source: str) -> tuple[LayerSummary, ...]:
@@ -60,11 +69,8 @@ def summaries(path: str, source: str) -> tuple[LayerSummary, ...]:
     ReadError
         It cannot be opened.
     """
-    try:
-        with quiet():
-            rows = pyogrio.list_layers(source)
-    except Failure as error:
-        raise open_failure(path, error) from None
+    with opening(path):
+        rows = pyogrio.list_layers(source)
     types = [None if kind is None else str(GeometryType.parse(str(kind))) for _, kind in rows]
     return tuple(LayerSummary(str(name), kind, None) for (name, _), kind in zip(rows, types, strict=True))
 
@@ -73,11 +79,8 @@ def counted(path: str, source: str, summary: LayerSummary) -> LayerSummary:
     """Add the number of rows to what is known of a layer, where the driver knows it without counting."""
     if summary.row_count is not None or summary.geometry_type is None:
         return summary
-    try:
-        with quiet():
-            count = int(pyogrio.read_info(source, layer=summary.name)["features"])
-    except Failure as error:
-        raise open_failure(path, error) from None
+    with opening(path):
+        count = int(pyogrio.read_info(source, layer=summary.name)["features"])
     return replace(summary, row_count=count if count >= 0 else None)
 
 
@@ -100,20 +103,14 @@ def describe(path: str, source: str, layer: str, where: str | None, bbox: Bounds
     ReadError
         The layer cannot be opened, has no geometries, or `where` is no condition that GDAL understands.
     """
-    with quiet() as texts:
-        try:
-            info = pyogrio.read_info(source, layer=layer)
-        except Failure as error:
-            raise open_failure(path, error) from None
+    with opening(path) as texts:
+        info = pyogrio.read_info(source, layer=layer)
         if info["geometry_type"] is None:
             raise ReadError(f"{path}: layer {layer!r} has no geometry column; name a layer that has one")
         if where is not None:
             _check_where(path, source, info, where)
-        try:
-            with open_arrow(source, layer=layer, use_pyarrow=True, batch_size=1) as (_, reader):
-                schema = pa.schema([plain_field(field) for field in reader.schema if not is_wkb_field(field)])
-        except Failure as error:
-            raise open_failure(path, error) from None
+        with open_arrow(source, layer=layer, use_pyarrow=True, batch_size=1) as (_, reader):
+            schema = pa.schema([plain_field(field) for field in reader.schema if not is_wkb_field(field)])
     kind = GeometryType.parse(str(info["geometry_type"]))
     is_measured = any(MEASURED in text for text in texts)
     is_open = kind.base == "Unknown"
@@ -124,7 +121,7 @@ def describe(path: str, source: str, layer: str, where: str | None, bbox: Bounds
         source=source,
         layer=layer,
         driver=info["driver"],
-        crs_wkt=_wkt(info["crs"]),
+        crs_wkt=crs_wkt(path, info["crs"]),
         geometry_type=str(kind),
         has_z=None if is_open and not kind.has_z else kind.has_z,
         has_m=None if is_open and not kind.has_m else kind.has_m,
@@ -145,13 +142,6 @@ def _extent(values: tuple[float, ...] | None, features: int) -> Bounds | None:
         return None
     x_min, y_min, x_max, y_max = (float(value) for value in values)
     return x_min, y_min, x_max, y_max
-
-
-def _wkt(crs: str | None) -> str | None:
-    if not crs:
-        return None
-    parsed = pyproj.CRS.from_user_input(crs)
-    return None if parsed.name.lower() in _NO_CRS else parsed.to_wkt()
 
 
 def _rows_per_read(source: str, features: int) -> int:

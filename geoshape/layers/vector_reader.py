@@ -17,7 +17,7 @@ from geoshape.layers.attributes import is_wkb_field, plain_array
 from geoshape.layers.complaints import MEASURED, Failure, one_line, quiet
 from geoshape.layers.layer import LayerInfo
 from geoshape.layers.recut import Rows
-from geoshape.layers.vector_info import open_failure
+from geoshape.layers.vector_info import opening
 
 _DEFAULT_GEOMETRY_NAME = "wkb_geometry"
 # GDAL's own Arrow reader of this format forgets to close the offsets of rows without geometry.
@@ -117,11 +117,8 @@ class _Reader:
             use_pyarrow=True,
             batch_size=info.rows_per_read,
         )
-        with quiet():
-            try:
-                meta, self._batches = self._context.__enter__()
-            except Failure as error:
-                raise open_failure(info.path, error) from None
+        with opening(info.path):
+            meta, self._batches = self._context.__enter__()
         self.geometry_name = meta["geometry_name"] or _DEFAULT_GEOMETRY_NAME
         return self
 
