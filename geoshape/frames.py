@@ -55,8 +55,8 @@ def measure(layer: gpd.GeoDataFrame, *, options: MeasureOptions | None = None) -
     Examples
     --------
     >>> import shapely
-    >>> square = gpd.GeoDataFrame(geometry=[shapely.box(0, 0, 10, 10)], crs="EPSG:32632")
-    >>> measure(square, options=MeasureOptions(ground="plane", families=("compactness",))).polsby_popper.round(4).item()
+    >>> square = gpd.GeoDataFrame(geometry=[shapely.box(500000, 5000000, 500010, 5000010)], crs="EPSG:32632")
+    >>> measure(square, options=MeasureOptions(families=("compactness",))).polsby_popper.round(4).item()
     0.7854
     """
     options = options or MeasureOptions()

@@ -10,6 +10,7 @@ from collections import deque
 from collections.abc import Callable, Iterable, Iterator
 from concurrent.futures import Future, ProcessPoolExecutor
 from concurrent.futures.process import BrokenProcessPool
+from contextlib import contextmanager
 from itertools import islice
 from multiprocessing import connection, get_context, parent_process
 from typing import Any, TypeVar
@@ -104,7 +105,9 @@ class Workers:
         waiting: deque[tuple[Task, Future[Any]]] = deque()
         try:
             for kept, sent in tasks:
-                waiting.append((kept, executor.submit(_work, sent)))
+                with _interrupts_ignored():
+                    future = executor.submit(_work, sent)
+                waiting.append((kept, future))
                 if len(waiting) >= self._jobs * TASKS_AHEAD:
                     yield _finished(waiting.popleft())
             while waiting:
@@ -115,6 +118,22 @@ class Workers:
             ) from None
         finally:
             executor.shutdown(wait=True, cancel_futures=True)
+
+
+@contextmanager
+def _interrupts_ignored() -> Iterator[None]:
+    """Let processes that start meanwhile be born deaf to interrupts: those are the parent's business.
+
+    A signal that comes just now is lost; only the main thread can do this, and only it is interrupted.
+    """
+    if threading.current_thread() is not threading.main_thread():
+        yield
+        return
+    before = signal.signal(signal.SIGINT, signal.SIG_IGN)
+    try:
+        yield
+    finally:
+        signal.signal(signal.SIGINT, before)
 
 
 def _chained(head: list[tuple[Task, object]], rest: Iterator[tuple[Task, object]]) -> Iterator[tuple[Task, object]]:
@@ -131,8 +150,6 @@ _function: Callable[[Any], Any] | None = None
 
 
 def _start_worker(prepare: Callable[[Any], Callable[[Any], Any]], settings: object) -> None:
-    # An interrupt is the parent's business: it ends the workers itself.
-    signal.signal(signal.SIGINT, signal.SIG_IGN)
     threading.Thread(target=_die_with_parent, daemon=True).start()
     keep_freed_memory()
     global _function  # noqa: PLW0603 - the one state a worker process has
