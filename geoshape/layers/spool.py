@@ -5,6 +5,7 @@ from __future__ import annotations
 import shutil
 import tempfile
 from collections.abc import Iterator, Sequence
+from contextlib import suppress
 from pathlib import Path
 from types import TracebackType
 from typing import Self
@@ -50,7 +51,8 @@ class Spool:
         try:
             self._folder = Path(tempfile.mkdtemp(prefix=".geoshape-spool-", dir=folder))
             self._path = self._folder / "rows.arrow"
-            self._writer = pa.ipc.new_file(str(self._path), self._stored)
+            self._sink = pa.OSFile(str(self._path), "wb")
+            self._writer = pa.ipc.new_file(self._sink, self._stored)
         except OSError as error:
             raise WriteError(f"no temporary file can be made ({error}); set TMPDIR to a folder with room") from None
 
@@ -82,16 +84,21 @@ class Spool:
         try:
             self._writer.write_batch(batch)
         except OSError as error:
-            raise WriteError(f"{self._path}: rows cannot be kept aside ({error}); make room on the disk") from None
+            raise self._failure(error) from None
         self.n_rows += len(geometry)
 
     def _finish(self) -> None:
-        if self._writer is not None:
-            try:
-                self._writer.close()
-            except OSError as error:
-                raise WriteError(f"{self._path}: rows cannot be kept aside ({error}); make room on the disk") from None
-            self._writer = None
+        if self._writer is None:
+            return
+        try:
+            self._writer.close()
+            self._sink.close()
+        except OSError as error:
+            raise self._failure(error) from None
+        self._writer = None
+
+    def _failure(self, error: OSError) -> WriteError:
+        return WriteError(f"{self._path}: rows cannot be kept aside ({error}); make room on the disk")
 
     def batches(self) -> Iterator[LayerBatch]:
         """Read all rows again, in the batches that were written.
@@ -145,6 +152,10 @@ class Spool:
     def close(self) -> None:
         """Remove the file."""
         if self._writer is not None:
-            self._writer.close()
+            # What cannot be written any more is not needed either.
+            with suppress(OSError):
+                self._writer.close()
+            with suppress(OSError):
+                self._sink.close()
             self._writer = None
         shutil.rmtree(self._folder, ignore_errors=True)

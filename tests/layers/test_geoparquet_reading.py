@@ -327,3 +327,54 @@ def test_folders_and_archives(tmp_path: Path) -> None:
     assert failure(folder) == "is a folder; name one Parquet file"
     with pytest.raises(ReadError, match=r"GeoParquet is read from plain files only; unpack or fetch it first$"):
         open_layer("/vsizip/a.zip/a.parquet")
+
+
+class Marked(pa.ExtensionType):  # type: ignore[misc]
+    """Geometries as other libraries register them with Arrow."""
+
+    def __init__(self) -> None:
+        super().__init__(pa.binary(), "geoarrow.wkb")
+
+    def __arrow_ext_serialize__(self) -> bytes:
+        return b""
+
+    @classmethod
+    def __arrow_ext_deserialize__(cls, storage: pa.DataType, serialized: bytes) -> "Marked":
+        return cls()
+
+
+def test_geometries_of_a_registered_type(tmp_path: Path) -> None:
+    wkb = samples.wkb(samples.POLYGON, None)
+    table = pa.table({"geometry": pa.ExtensionArray.from_storage(Marked(), wkb), "row": [0, 1]})
+    path = with_geo(tmp_path / "a.parquet", geo_of(), table)
+    source = samples.WORLD
+    pa.register_extension_type(Marked())
+    try:
+        (batch,) = read_batches(open_layer(path))
+        (world,) = read_batches(open_layer(source))
+    finally:
+        pa.unregister_extension_type("geoarrow.wkb")
+    assert batch.geometry.equals(wkb)
+    assert (world.n_rows, world.geometry.type) == (177, pa.binary())
+
+
+def test_native_encoding_without_stated_types(tmp_path: Path) -> None:
+    path = native(tmp_path, [samples.MULTI], "multipolygon")
+    geo = json.loads(pq.read_metadata(path).metadata[b"geo"])
+    geo["columns"]["geometry"]["geometry_types"] = []
+    with_geo(path, geo, pq.read_table(path))
+    assert open_layer(path).geometry_type == "MultiPolygon"
+
+
+def test_covering_without_statistics(tmp_path: Path) -> None:
+    frame = gpd.GeoDataFrame({"row": range(4)}, geometry=[shapely.box(i, 0, i + 0.5, 1) for i in range(4)])
+    path = tmp_path / "a.parquet"
+    frame.to_parquet(path, write_covering_bbox=True, row_group_size=2, write_statistics=False)
+    assert rows_of(path, bbox=(2.2, 0, 2.3, 1))[0].column("row").to_pylist() == [2]
+
+
+def test_long_binary_becomes_plain(tmp_path: Path) -> None:
+    table = pa.table({"code": pa.array([b"ab", None], pa.binary(2)), "geometry": samples.wkb(samples.POLYGON, None)})
+    (batch,) = read_batches(open_layer(with_geo(tmp_path / "a.parquet", geo_of(), table)))
+    assert batch.attributes.column(0).to_pylist() == [b"ab", None]
+    assert batch.attributes.schema.field(0).type == pa.binary()

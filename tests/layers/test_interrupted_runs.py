@@ -7,6 +7,8 @@ import sqlite3
 import subprocess
 import sys
 import time
+from collections.abc import Iterator
+from contextlib import contextmanager, suppress
 from pathlib import Path
 
 import numpy as np
@@ -18,7 +20,8 @@ import shapely
 from geoshape.errors import GeometryError, WriteError
 from geoshape.layers.lineage import read_lineage
 from geoshape.layers.plan import LayerContent, plan_output
-from geoshape.layers.staging import remove_litter, staging_folder
+from geoshape.layers.spool import Spool
+from geoshape.layers.staging import copy_database, has_room, remove_litter, staging_folder
 from geoshape.layers.write import OutputBatch, write_batches
 from tests.layers import samples
 
@@ -149,14 +152,7 @@ FULL = "the disk is full; make room and run again (what was there is untouched)"
 
 @pytest.mark.parametrize("suffix", SUFFIXES)
 def test_full_disk(tmp_path: Path, suffix: str) -> None:
-    disk = tmp_path / "disk"
-    disk.mkdir()
-    mounted = subprocess.run(
-        ["mount", "-t", "tmpfs", "-o", "size=600k", "tmpfs", str(disk)], capture_output=True, check=False
-    )
-    if mounted.returncode:
-        pytest.skip("a small disk can be made by the superuser only")
-    try:
+    with small_disk(tmp_path / "disk") as disk:
         target = disk / f"out{suffix}"
         write_batches(plan_output(target, samples.plain_content()), [samples.numbered(samples.POLYGON)])
         before = files(disk)
@@ -167,8 +163,6 @@ def test_full_disk(tmp_path: Path, suffix: str) -> None:
             write_batches(plan, (noise(rng) for _ in range(20)))
         assert str(caught.value) == f"{target}: {FULL}"
         assert files(disk) == before
-    finally:
-        subprocess.run(["umount", str(disk)], check=True)
 
 
 @pytest.mark.parametrize(
@@ -277,3 +271,77 @@ def test_geopackage_with_changes_in_its_journal(tmp_path: Path) -> None:
         assert connection.execute("SELECT text FROM notes").fetchone() == ("kept",)
     connection.close()
     assert sorted(str(name) for name, _ in pyogrio.list_layers(path)) == ["lakes", "notes", "roads"]
+
+
+@contextmanager
+def small_disk(folder: Path) -> Iterator[Path]:
+    folder.mkdir()
+    mount = ["mount", "-t", "tmpfs", "-o", "size=600k", "tmpfs", str(folder)]
+    try:
+        mounted = subprocess.run(mount, capture_output=True, check=False).returncode == 0
+    except FileNotFoundError:
+        mounted = False
+    if not mounted:
+        pytest.skip("a small disk can be made by the superuser only")
+    try:
+        yield folder
+    finally:
+        subprocess.run(["umount", str(folder)], check=True)
+
+
+def test_rows_kept_aside_on_a_full_disk(tmp_path: Path) -> None:
+    rng = np.random.default_rng(1)
+    batch = noise(rng)
+    with small_disk(tmp_path / "disk") as disk:
+        with Spool(batch.attributes.schema, disk) as spool:
+            text = ""
+            for _ in range(20):
+                try:
+                    spool.write(batch.attributes, batch.geometry)
+                except WriteError as error:
+                    text = str(error)
+        assert "rows cannot be kept aside" in text
+        assert text.endswith("; make room on the disk")
+        assert list(disk.iterdir()) == []
+
+
+def test_last_rows_kept_aside_on_a_full_disk(tmp_path: Path) -> None:
+    batch = samples.numbered(samples.POLYGON)
+    with small_disk(tmp_path / "disk") as disk:
+        with Spool(batch.attributes.schema, disk) as spool:
+            spool.write(batch.attributes, batch.geometry)
+            with suppress(OSError):
+                (disk / "big").write_bytes(b"x" * 700_000)
+            for i in range(10_000):
+                try:
+                    (disk / str(i)).write_bytes(b"x")
+                except OSError:
+                    break
+            with suppress(WriteError):
+                for _ in range(1000):
+                    spool.write(batch.attributes, batch.geometry)
+            with pytest.raises(WriteError, match="make room on the disk"):
+                list(spool.batches())
+        assert not [path for path in disk.iterdir() if path.is_dir()]
+
+
+def test_room_on_a_disk_that_is_not_there(tmp_path: Path) -> None:
+    assert has_room(tmp_path / "no")
+    assert has_room(tmp_path)
+
+
+def test_litter_of_others_who_live(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    def forbid(pid: int, signal: int) -> None:
+        raise PermissionError
+
+    monkeypatch.setattr("geoshape.layers.staging.os.kill", forbid)
+    (tmp_path / ".geoshape-out.gpkg-1").mkdir()
+    remove_litter(tmp_path / "out.gpkg")
+    assert len(list(tmp_path.iterdir())) == 1
+
+
+def test_copy_that_fails_is_no_damage(tmp_path: Path) -> None:
+    path = tmp_path / "a.gpkg"
+    make_layer(path, "a", 1, "ok")
+    with pytest.raises(sqlite3.OperationalError):
+        copy_database(path, tmp_path / "no" / "b.gpkg")

@@ -6,6 +6,7 @@ import pickle
 import sqlite3
 import zipfile
 from collections.abc import Callable
+from dataclasses import replace
 from pathlib import Path
 
 import pyarrow as pa
@@ -16,8 +17,11 @@ import shapely
 from pyogrio.raw import read_arrow, write_arrow
 
 from geoshape.errors import GeoshapeError, GeoshapeWarning, LayerChoiceError, OptionError, ReadError
+from geoshape.layers import vector_reader
+from geoshape.layers.crs import crs_wkt
 from geoshape.layers.plan import plan_output
 from geoshape.layers.read import LayerInfo, LayerSummary, list_layers, open_layer, read_batches
+from geoshape.layers.sources import archive_of
 from geoshape.layers.write import write_batches
 from tests.layers import samples
 
@@ -521,3 +525,58 @@ def test_archives_without_layers(tmp_path: Path) -> None:
     assert text.endswith("); unpack it and name the file")
     path.write_bytes(b"PK no archive")
     assert failure(path) == "the archive is damaged or none (File is not a zip file); fetch it again"
+
+
+def test_stream_that_ends_before_its_time(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    path = make(tmp_path / "a.gpkg", *[samples.POLYGON] * 6)
+    info = replace(open_layer(path), rows_per_read=2)
+    whole = vector_reader._Reader.next_batch
+    monkeypatch.setattr(
+        vector_reader._Reader, "next_batch", lambda self, done: None if done == 4 else whole(self, done)
+    )
+    with pytest.raises(ReadError) as caught:
+        list(read_batches(info))
+    assert str(caught.value) == (
+        f"{path}: layer 'a' cannot be read after row 4 (6 rows are there); check that the file is whole"
+    )
+
+
+def test_stream_that_breaks_off(tmp_path: Path) -> None:
+    path = make(tmp_path / "a.gpkg", *[samples.POLYGON] * 5000)
+    data = bytearray(path.read_bytes())
+    middle = len(data) // 2 // 4096 * 4096
+    data[middle : middle + 40_960] = b"\xff" * 40_960
+    path.write_bytes(data)
+    text = failure(path, lambda path: read_all(path, where="row >= 0"))
+    assert text.startswith("layer 'a' cannot be read after row ")
+    assert text.endswith("(database disk image is malformed); check that the file is whole")
+
+
+def test_file_that_goes_away(tmp_path: Path) -> None:
+    path = make(tmp_path / "a.gpkg")
+    info = open_layer(path)
+    path.unlink()
+    with pytest.raises(ReadError, match=r"a.gpkg: cannot be opened \(.*No such file"):
+        list(read_batches(info))
+
+
+@pytest.mark.parametrize(
+    ("path", "file"),
+    [
+        ("a/b.gpkg", "a/b.gpkg"),
+        ("/vsizip/x.zip/a/b.shp", "x.zip"),
+        ("/vsizip//data/x.zip/b.shp", "/data/x.zip"),
+        ("/vsizip/{/data/x.odd}/b.shp", "/data/x.odd"),
+        ("/vsizip/{/data/x.odd", "/data/x.odd"),
+        ("/vsigzip//data/x.geojson.gz", "/data/x.geojson.gz"),
+        ("/vsizip//vsicurl/https://example.org/x.zip/b.shp", "https://example.org/x.zip"),
+        ("/vsi", ""),
+    ],
+)
+def test_file_behind_a_path(path: str, file: str) -> None:
+    assert archive_of(path) == file
+
+
+def test_crs_that_nobody_understands() -> None:
+    with pytest.raises(ReadError, match=r"^a.gpkg: its CRS is not understood \(.*\); write the file anew$"):
+        crs_wkt("a.gpkg", "EPSG:999999")

@@ -7,6 +7,7 @@ import warnings
 from collections.abc import Iterator
 from pathlib import Path
 
+import numpy as np
 import pyarrow as pa
 import pyarrow.parquet as pq
 import pyogrio
@@ -600,3 +601,31 @@ def test_what_the_driver_complains_of_is_in_the_result(tmp_path: Path) -> None:
     result = write_batches(plan, [samples.numbered(samples.MULTI, samples.MULTI)])
     (text,) = result.warnings
     assert text.startswith("A geometry of type MULTIPOLYGON is inserted into layer a of geometry type POLYGON")
+
+
+def test_flatgeobuf_of_nothing_known(tmp_path: Path) -> None:
+    path = tmp_path / "a.fgb"
+    write_batches(plan_output(path, samples.plain_content("Unknown", UTM)), [])
+    assert pyogrio.read_info(path)["geometry_type"] == "Unknown"
+    write_batches(plan_output(path, samples.plain_content("MultiPolygon Z", UTM), overwrite=True), [])
+    assert pyogrio.read_info(path)["geometry_type"] == "MultiPolygon Z"
+
+
+def test_whole_numbers_without_sign_that_fit(tmp_path: Path) -> None:
+    rows = pa.record_batch({"n": pa.array([2**63 - 1, None], pa.uint64()), "b": pa.array([{"x": b"\1"}, None])})
+    plan = plan_output(tmp_path / "a.gpkg", samples.LayerContent(rows.schema, (), UTM, "Polygon"))
+    result = write_batches(plan, [OutputBatch(rows, samples.wkb(None, None))])
+    table, _ = reopen(tmp_path / "a.gpkg")
+    assert table.column("n").to_pylist() == [2**63 - 1, None]
+    assert json.loads(str(table.column("b")[0])) == {"x": "01"}
+    assert result.warnings == ()
+
+
+def test_heights_that_are_no_number_do_not_count(tmp_path: Path) -> None:
+    path = tmp_path / "a.parquet"
+    plan = plan_output(path, samples.plain_content("Polygon Z", UTM))
+    shape = shapely.polygons([[0.0, 0.0, np.nan], [1.0, 0.0, np.nan], [1.0, 1.0, np.nan], [0.0, 0.0, np.nan]])
+    rows = pa.record_batch({"row": pa.array([0], pa.int64())})
+    write_batches(plan, [OutputBatch(rows, pa.array([shapely.to_wkb(shape)], pa.binary()))])
+    geo = json.loads(pq.read_metadata(path).metadata[b"geo"])
+    assert geo["columns"]["geometry"]["bbox"] == [0.0, 0.0, 1.0, 1.0]
