@@ -3,22 +3,29 @@
 from __future__ import annotations
 
 import io
+import re
+from collections import Counter
 from dataclasses import dataclass
 
 import numpy as np
 import pyarrow as pa
-import pyarrow.types as pt
 import shapely
 from pyogrio.raw import read_arrow, write_arrow
 
 from geoshape.layers.complaints import Failure, quiet
+from geoshape.layers.formats import FLATGEOBUF
 from geoshape.layers.layer import Bounds
+from geoshape.layers.storage import stored_arrays, stored_schema
 from geoshape.layers.vector_info import where_error
 from geoshape.rings import BoolArray
 
 _ROW = "geoshape_row_number"
 # Holds attributes without geometry in memory, and is filtered in GDAL's own dialect of SQL.
 _DRIVER = "FlatGeobuf"
+# Words that GDAL answers from its own store of features, which here is a batch without geometries.
+_OF_DRIVERS = frozenset({"FID", "OGR_GEOMETRY", "OGR_GEOM_AREA", "OGR_GEOM_WKT", "OGR_STYLE"})
+_TEXT = re.compile(r"'(?:[^']|'')*'")
+_WORD = re.compile(r"\w+")
 
 
 @dataclass(frozen=True)
@@ -33,12 +40,14 @@ class Filter:
 
     where: str
 
-    def keeps(self, attributes: pa.RecordBatch) -> BoolArray:
+    def keeps(self, attributes: pa.RecordBatch, n_rows: int) -> BoolArray:
         """Say which rows the condition holds for.
 
         Parameters
         ----------
         attributes : pyarrow.RecordBatch, (n,)
+        n_rows : int
+            n, which a batch without attributes does not know.
 
         Returns
         -------
@@ -50,10 +59,10 @@ class Filter:
         RuntimeError or ValueError
             GDAL cannot use the condition.
         """
-        keep = np.zeros(attributes.num_rows, dtype=np.bool_)
-        if not attributes.num_rows:
+        keep = np.zeros(n_rows, dtype=np.bool_)
+        if not n_rows:
             return keep
-        data = _in_memory(attributes)
+        data = _in_memory(attributes, n_rows)
         with quiet():
             # All columns: this driver finds no row when the one asked about is left out of the result.
             _, rows = read_arrow(data, read_geometry=False, where=self.where)
@@ -61,10 +70,11 @@ class Filter:
         return keep
 
 
-def _in_memory(attributes: pa.RecordBatch) -> io.BytesIO:
-    fields = [(field, attributes.column(i)) for i, field in enumerate(attributes.schema) if _is_plain(field.type)]
-    numbers = pa.array(np.arange(attributes.num_rows), pa.int64())
-    columns = {field.name: column for field, column in fields} | {_ROW: numbers}
+def _in_memory(attributes: pa.RecordBatch, n_rows: int) -> io.BytesIO:
+    stored = stored_schema(attributes.schema, attributes.schema.names, FLATGEOBUF)
+    arrays = stored_arrays(attributes, stored, FLATGEOBUF, Counter())
+    numbers = pa.array(np.arange(n_rows), pa.int64())
+    columns = dict(zip(stored.names, arrays, strict=True)) | {_ROW: numbers}
     data = io.BytesIO()
     with quiet():
         write_arrow(pa.table(columns), data, driver=_DRIVER, layer="rows", layer_options={"SPATIAL_INDEX": "NO"})
@@ -72,20 +82,28 @@ def _in_memory(attributes: pa.RecordBatch) -> io.BytesIO:
     return data
 
 
-def _is_plain(kind: pa.DataType) -> bool:
-    return not (pt.is_nested(kind) or pt.is_binary(kind) or pt.is_null(kind))
-
-
 def check_where(path: str, schema: pa.Schema, where: str) -> None:
-    """Raise a ReadError where GDAL cannot use a condition on these columns."""
+    """Raise a ReadError where GDAL cannot use a condition on these columns.
+
+    Parameters
+    ----------
+    path : str
+    schema : pyarrow.Schema
+    where : str
+
+    Raises
+    ------
+    ReadError
+        The condition is no SQL, or asks for what is not there: another column, a feature id, or the geometry.
+    """
+    for word in _WORD.findall(_TEXT.sub("", where)):
+        if word.upper() in _OF_DRIVERS and word.casefold() not in map(str.casefold, schema.names):
+            raise where_error(path, where, f"GeoParquet has no {word}", schema.names)
     one = pa.RecordBatch.from_arrays([pa.nulls(1, field.type) for field in schema], schema=schema)
-    data = _in_memory(one)
+    data = _in_memory(one, 1)
     try:
         with quiet():
-            name = '"rows"'
-            read_arrow(data, sql=f"SELECT * FROM {name} WHERE {where}", sql_dialect="OGRSQL")  # noqa: S608
-            data.seek(0)
-            read_arrow(data, where=where)
+            read_arrow(data, sql=f"SELECT * FROM rows WHERE {where}", sql_dialect="OGRSQL")  # noqa: S608
     except Failure as error:
         raise where_error(path, where, error, schema.names) from None
 

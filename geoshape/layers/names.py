@@ -57,9 +57,10 @@ def check_case(existing: Sequence[str], format_name: str) -> None:
     ColumnNameError
         Some do.
     """
-    seen: dict[str, str] = {}
+    seen: dict[bytes, str] = {}
     for name in existing:
-        other = seen.setdefault(name.casefold(), name)
+        # Databases ignore the case of ASCII letters only, as bytes do.
+        other = seen.setdefault(name.encode().lower(), name)
         if other is not name:
             raise ColumnNameError(
                 f"columns {other!r} and {name!r} are one to {format_name}, which ignores case; "

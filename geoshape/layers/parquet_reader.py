@@ -257,7 +257,7 @@ def _chosen(rows: Rows, row_filter: Filter | None, bbox: Bounds | None) -> Rows:
     if bbox is not None:
         keep &= meets_box(geometry, bbox)
     if row_filter is not None:
-        keep &= row_filter.keeps(attributes)
+        keep &= row_filter.keeps(attributes, len(geometry))
     if keep.all():
         return rows
     index = pa.array(np.flatnonzero(keep))

@@ -167,10 +167,11 @@ def _check_where(path: str, source: str, info: dict[str, Any], where: str) -> No
         raise where_error(path, where, error, map(str, info["fields"])) from None
 
 
-def where_error(path: str, where: str, error: BaseException, fields: Iterable[str]) -> ReadError:
+def where_error(path: str, where: str, error: BaseException | str, fields: Iterable[str]) -> ReadError:
     """Say why a condition cannot be used, and what it could name."""
     text = one_line(one_line(error).split(" Occurred around", maxsplit=1)[0])
-    return ReadError(f"{path}: --where {where!r} cannot be used ({text}); the layer's columns are: {', '.join(fields)}")
+    listed = ", ".join(fields) or "none"
+    return ReadError(f"{path}: --where {where!r} cannot be used ({text}); the layer's columns are: {listed}")
 
 
 def _try_in_database(source: str, layer: str, where: str) -> None:

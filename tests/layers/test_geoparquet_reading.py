@@ -123,6 +123,9 @@ def test_where_on_every_type(tmp_path: Path) -> None:
     [
         ("foo = 1", '"foo" not recognised as an available field'),
         ("NAME >", "SQL Expression Parsing Error: syntax error, unexpected end of string"),
+        # A batch of rows knows nothing of these, and would answer all the same.
+        ("fid < 3", "GeoParquet has no fid"),
+        ("NAME = 'FID' AND OGR_GEOM_AREA > 1", "GeoParquet has no OGR_GEOM_AREA"),
     ],
 )
 def test_bad_where(tmp_path: Path, counties: gpd.GeoDataFrame, where: str, reason: str) -> None:
@@ -133,8 +136,33 @@ def test_bad_where(tmp_path: Path, counties: gpd.GeoDataFrame, where: str, reaso
     assert str(caught.value) == f"{path}: --where {where!r} cannot be used ({reason}); the layer's columns are: NAME"
 
 
+def test_where_on_rare_types(tmp_path: Path) -> None:
+    columns = {
+        "fid": pa.array([7, 8]),
+        "lasting": pa.array([5, None], pa.duration("ms")),
+        "exact": pa.array([1, 2], pa.decimal128(9, 2)),
+        "nested": pa.array([{"a": 1}, None]),
+        "list": pa.array([[1], None]),
+        "raw": pa.array([b"x", None]),
+        "whole": pa.array([1, 2], pa.uint64()),
+        "geometry": samples.wkb(samples.POLYGON, None),
+    }
+    path = with_geo(tmp_path / "a.parquet", geo_of(), pa.table(columns))
+    for where in ("fid = 8 AND exact = 2", "whole > 1 AND nested IS NULL", "list IS NULL", "NOT (raw IS NOT NULL)"):
+        assert rows_of(path, where=where)[0].column("fid").to_pylist() == [8], where
+
+
+def test_where_without_columns(tmp_path: Path) -> None:
+    table = pa.table({"geometry": samples.wkb(samples.POLYGON, None)})
+    path = with_geo(tmp_path / "a.parquet", geo_of(), table)
+    with pytest.raises(ReadError, match=r"cannot be used \(.*\); the layer's columns are: none$"):
+        open_layer(path, where="a = 1")
+    assert len(rows_of(path, where="1 = 1")[1]) == 2
+    assert len(rows_of(path, where="1 = 0")[1]) == 0
+
+
 def test_filter_of_no_rows() -> None:
-    assert Filter("x = 1").keeps(pa.record_batch({"x": pa.array([], pa.int64())})).tolist() == []
+    assert Filter("x = 1").keeps(pa.record_batch({"x": pa.array([], pa.int64())}), 0).tolist() == []
 
 
 @pytest.mark.parametrize("covering", [False, True])
