@@ -96,11 +96,18 @@ class ShapeFit:
         """
         if self.degrees is not None:
             return self.degrees.fit(geometry, losses)
+        if self.form in _ONE_TYPE:
+            self._count_empty(geometry, losses)
         if self.kind.simple is not None and self.form in {GEOPACKAGE, FLATGEOBUF}:
             geometry = promoted(geometry, self.kind.base)
         if self.form in _ONE_TYPE and self.kind.base != UNKNOWN:
             geometry = self._of_one_type(geometry, losses)
         return self._of_one_dimension(geometry, losses) if self.form is FLATGEOBUF else geometry
+
+    def _count_empty(self, geometry: pa.BinaryArray, losses: Losses) -> None:
+        n_empty = int(np.count_nonzero(headers(geometry).is_empty))
+        if n_empty:
+            losses[f"empty geometries are null in {self.form.name}"] += n_empty
 
     def _of_one_type(self, geometry: pa.BinaryArray, losses: Losses) -> pa.BinaryArray:
         head = headers(geometry)

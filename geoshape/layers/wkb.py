@@ -123,6 +123,12 @@ class Headers:
     is_swapped: BoolArray
 
     @property
+    def is_empty(self) -> BoolArray:
+        """(n,) whether there is a geometry without parts, rings or vertices; an empty point does not count."""
+        is_short = self.byte_length == _MULTI_HEADER_BYTES
+        return np.asarray(self.is_known & is_short & (self.code > TYPE_CODES["Point"]), dtype=np.bool_)
+
+    @property
     def vertex_count(self) -> IntArray:
         """(n,) about how many vertices there are: bytes over bytes a vertex."""
         stride = 16 + 8 * self.has_z + 8 * self.has_m
@@ -214,7 +220,11 @@ def promoted(geometry: pa.BinaryArray, multi: str) -> pa.BinaryArray:
         chosen = is_simple & (head.is_swapped == swapped) & (head.has_z == has_z) & (head.has_m == has_m)
         code = TYPE_CODES[multi] + 1000 * int(has_z) + 2000 * int(has_m)
         order: Literal["big", "little"] = "big" if swapped else "little"
-        prefix = bytes([0 if swapped else _LITTLE_ENDIAN]) + code.to_bytes(4, order) + (1).to_bytes(_COUNT_BYTES, order)
+        start = bytes([0 if swapped else _LITTLE_ENDIAN]) + code.to_bytes(4, order)
+        prefix = start + (1).to_bytes(_COUNT_BYTES, order)
         joined = pc.binary_join_element_wise(pa.scalar(prefix, pa.binary()), geometry, pa.scalar(b"", pa.binary()))
-        geometry = pc.if_else(pa.array(chosen), joined, geometry)
+        geometry = pc.if_else(pa.array(chosen & ~head.is_empty), joined, geometry)
+        if head.is_empty.any():
+            empty = pa.scalar(start + bytes(_COUNT_BYTES), pa.binary())
+            geometry = pc.if_else(pa.array(chosen & head.is_empty), empty, geometry)
     return geometry

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import errno
+import os
 import sqlite3
 import sys
 from collections import Counter
@@ -185,7 +186,10 @@ def _write_file(
                 raise OSError(errno.ENOSPC, one_line(error)) from error
             raise
         names = publish(folder, path, beside)
-    return tuple(str(file) for file in beside if file.name in names), complaints
+    # Named as the user names the output, unless that is a link to another folder.
+    given = Path(plan.target).parent
+    folder_name = given if os.path.realpath(given) == str(path.parent) else path.parent
+    return tuple(str(folder_name / file.name) for file in beside if file.name in names), complaints
 
 
 def _write_rows(plan: OutputPlan, producer: _Producer, losses: Losses, made: Path, told: _Told) -> tuple[str, ...]:

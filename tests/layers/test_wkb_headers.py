@@ -37,6 +37,7 @@ def test_headers_say_what_shapely_says(flavor: str, byte_order: int) -> None:
     assert head.has_m.tolist() == [bool(shape.has_m) for shape in shapes]
     assert head.is_swapped.tolist() == [byte_order == 0] * len(TEXTS)
     assert head.is_known.all()
+    assert head.is_empty.tolist() == [bool(shape.is_empty) for shape in shapes]
 
 
 def test_nulls_and_rubbish_have_no_header() -> None:
@@ -80,6 +81,12 @@ def test_promotion_is_what_shapely_makes(byte_order: int) -> None:
         # The polygon's own bytes are the end of the new ones.
         assert found[i].endswith(wkb[i].as_py())
         assert shapely.equals(shape, shapes[i])
+
+
+def test_promotion_of_nothing_is_nothing() -> None:
+    (found,) = promoted(samples.wkb(samples.EMPTY), "MultiPolygon").to_pylist()
+    assert shapely.from_wkb(found).wkt == "MULTIPOLYGON EMPTY"
+    assert promoted(samples.wkb("POINT (1 2)", None), "MultiPolygon").equals(samples.wkb("POINT (1 2)", None))
 
 
 @pytest.mark.parametrize(
