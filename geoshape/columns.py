@@ -298,6 +298,14 @@ def _of_family(family: str, columns: Iterable[Column]) -> tuple[Column, ...]:
 
 
 def _prefixed(columns: Iterable[Column], prefix: str) -> Iterable[Column]:
+    taken: set[str] = set()
     for column in columns:
         short = (prefix + column.short_name)[:SHORT_NAME_LENGTH]
+        number = 1
+        while short.casefold() in taken:
+            # Cut names that became alike are told apart by a number at the end.
+            ending = f"_{number}"
+            short = (prefix + column.short_name)[: SHORT_NAME_LENGTH - len(ending)] + ending
+            number += 1
+        taken.add(short.casefold())
         yield replace(column, name=prefix + column.name, short_name=short)

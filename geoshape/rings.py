@@ -201,16 +201,17 @@ def without_repeats(batch: RingBatch) -> RingBatch:
     repeats = (batch.x == batch.next_x) & (batch.y == batch.next_y)
     if not repeats.any():
         return _without_small(batch)
-    # The later vertex of a repeated pair goes, so that the ring keeps its first vertex.
-    drop = np.empty_like(repeats)
-    drop[1:] = repeats[:-1]
-    drop[batch.ring_start[:-1]] = False
-    closing = batch.ring_start[1:] - 1
-    drop[closing] |= repeats[closing]
-    drop[batch.ring_start[:-1]] = False
-    keep = ~drop
-    size = np.add.reduceat(keep.astype(np.int64), batch.ring_start[:-1])
-    return _without_small(batch.take_vertices(np.flatnonzero(keep), size))
+    first = batch.ring_start[:-1]
+    # The later vertex of a repeated pair goes, so that a ring keeps its first; then what still closes the ring.
+    keep = np.ones_like(repeats)
+    keep[1:] = ~repeats[:-1]
+    keep[first] = True
+    once = batch.take_vertices(np.flatnonzero(keep), np.add.reduceat(keep.astype(np.int64), first))
+    first, last = once.ring_start[:-1], once.ring_start[1:] - 1
+    closes = (last > first) & (once.x[last] == once.x[first]) & (once.y[last] == once.y[first])
+    keep = np.ones(once.n_vertices, dtype=np.bool_)
+    keep[last[closes]] = False
+    return _without_small(once.take_vertices(np.flatnonzero(keep), np.add.reduceat(keep.astype(np.int64), first)))
 
 
 def _without_small(batch: RingBatch) -> RingBatch:

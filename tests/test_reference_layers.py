@@ -73,7 +73,10 @@ class TestCountries:
         assert error.median() < 1e-7
         # Antarctica stops at 89.9 S in the data; what goes round the pole takes the rest of it in.
         is_ice = world.name_long == "Antarctica"
-        assert error[~is_ice].max() < 1e-6
+        # Fiji and Russia were cut at 180 degrees and stored at 179.99999: the metre between is taken in.
+        is_cut = world.name_long.isin(["Fiji", "Russian Federation"])
+        assert error[~is_ice & ~is_cut].max() < 1e-6
+        assert error[is_cut].max() < 5e-6
         assert measured.area_m2[is_ice].item() - expected[is_ice.to_numpy()].item() == pytest.approx(
             np.pi * (0.1 * 111_694.0) ** 2, rel=0.02
         )
@@ -91,7 +94,8 @@ class TestCountries:
         joined = shapely.union_all([shapely.transform(part, _eastwards) for part in parts])
         by_hand = russia.set_geometry(gpd.GeoSeries([joined], index=russia.index, crs=russia.crs))
         assert shapely.get_num_geometries(joined) < len(parts)
-        ours, expected = (geoshape.measure(layer).iloc[0] for layer in (russia, by_hand))
+        exact = MeasureOptions(spectrum="exact")
+        ours, expected = (geoshape.measure(layer, options=exact).iloc[0] for layer in (russia, by_hand))
         for column in ("area_m2", "perimeter_m", "polsby_popper", "feret_max_m", "fd_departure"):
             assert ours[column] == pytest.approx(expected[column], rel=1e-9), column
 

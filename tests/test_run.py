@@ -192,7 +192,8 @@ def test_a_run_that_is_killed_leaves_the_old_output_and_no_workers(sign, tmp_pat
     source, target = tmp_path / "many.gpkg", tmp_path / "o.gpkg"
     gpd.GeoDataFrame(geometry=rough, crs="EPSG:3035").to_file(source)
     target.write_bytes(b"old")
-    command = [sys.executable, "-m", "geoshape", "measure", str(source), str(target), "--overwrite", "--jobs", "2"]
+    command = [sys.executable, "-m", "geoshape", "measure", str(source), str(target), "--overwrite", "--jobs", "2",
+               "--samples", "16384"]  # fmt: skip
     run = subprocess.Popen(command, stderr=subprocess.PIPE, start_new_session=True)
     deadline = time.monotonic() + 60
     while not list(tmp_path.glob(".geoshape-*")) and time.monotonic() < deadline and run.poll() is None:

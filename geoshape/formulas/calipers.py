@@ -19,9 +19,6 @@ TIE_TOLERANCE = 1e-9
 CIRCLE_TOLERANCE = 1e-12
 """How far a point may lie outside the circle, relative to its radius."""
 
-PARALLEL = 1e-9
-"""Angle, in radians, below which two edges at the ends of a hull are parallel."""
-
 MAX_CIRCLE_STEPS = 1000
 """Far more steps than any circle takes: the radius grows with each, and few subsets of three exist."""
 
@@ -116,15 +113,14 @@ class _HullEdges:
     def of(cls, hull: RingBatch) -> _HullEdges:
         dx, dy = hull.next_x - hull.x, hull.next_y - hull.y
         length = np.sqrt(dx * dx + dy * dy)
-        direction = np.arctan2(dy, dx)
-        first = np.repeat(direction[hull.ring_start[:-1]], hull.ring_size)
-        angle = np.mod(direction - first, _FULL_TURN)
-        angle[hull.ring_start[:-1]] = 0.0
-        # Directions never decrease along a hull, but rounding may fold those parallel to the first edge either way.
-        middle = np.repeat(hull.ring_start[:-1] + hull.ring_size // 2, hull.ring_size)
-        is_early = np.arange(hull.n_vertices) < middle
-        angle[is_early & (angle > _FULL_TURN - PARALLEL)] = 0.0
-        angle[~is_early & (angle < PARALLEL)] = _FULL_TURN
+        first, last = hull.ring_start[:-1], hull.ring_start[1:] - 1
+        before_x, before_y = np.roll(dx, 1), np.roll(dy, 1)
+        before_x[first], before_y[first] = dx[last], dy[last]
+        # Turns of a convex ring go one way; what goes the other is rounding of edges in line.
+        turn = np.maximum(np.arctan2(before_x * dy - before_y * dx, before_x * dx + before_y * dy), 0.0)
+        turn[first] = 0.0
+        angle = np.cumsum(turn)
+        angle = np.minimum(angle - np.repeat(angle[first], hull.ring_size), _FULL_TURN)
         key = angle + 2.0 * _FULL_TURN * hull.vertex_ring
         per_length = np.divide(1.0, length, out=np.zeros_like(length), where=length > 0)
         return cls(hull, dx * per_length, dy * per_length, np.maximum.accumulate(key), angle)
@@ -256,10 +252,9 @@ def _grow(
     chosen = np.zeros((len(points), 3), dtype=np.int64)
     for subset in (*_PAIRS, *_TRIPLES):
         middle = _pair_centre(points, subset) if len(subset) == 2 else _circumcentre(points, subset)
-        reach = np.sqrt(((points - middle[:, None, :]) ** 2).sum(axis=2))
-        radius = reach[:, 3]
-        holds = (reach <= (radius * (1.0 + CIRCLE_TOLERANCE))[:, None]).all(axis=1)
-        better = holds & (radius < best)
+        # The radius that holds all four points about this centre: of several centres the right one needs the least.
+        radius = np.sqrt(((points - middle[:, None, :]) ** 2).sum(axis=2)).max(axis=1)
+        better = radius < best
         best[better] = radius[better]
         centre[better] = middle[better]
         chosen[better] = (*subset, 3)[:3]

@@ -17,6 +17,9 @@ from geoshape.rings import FloatArray, IntArray, RingBatch, outlines
 
 Columns = dict[str, FloatArray]
 
+THIN = 1e-3
+"""Axis ratio below which moments are taken again along the shape's own axes."""
+
 
 @dataclass(frozen=True, eq=False)
 class Shapes:
@@ -60,6 +63,31 @@ class Shapes:
     def central(self) -> FloatArray:
         """(n_features, 10) central moments; NaN without area."""
         return moments.central_moments(self.raw)
+
+    @cached_property
+    def aligned(self) -> FloatArray:
+        """(n_features, 10) central moments, those of thin shapes along the shape's own axes.
+
+        Whatever does not change by a turn may take them: the determinant of the moments of a thin shape that lies
+        askew is a difference of near-equal products.
+        """
+        principal = self.principal_as_drawn
+        thin = principal.ratio < THIN
+        if not thin.any():
+            return self.central
+        centre = moments.centroids(self.raw)[self.batch.vertex_feature]
+        angle = np.radians(90.0 - principal.azimuth_deg)[self.batch.vertex_feature]
+        x, y = self.batch.x - centre[:, 0], self.batch.y - centre[:, 1]
+        along = self.batch.moved(
+            x * np.cos(angle) + y * np.sin(angle), y * np.cos(angle) - x * np.sin(angle), self.batch.origin
+        )
+        kept = along.take_rings(thin[along.ring_feature])
+        return np.where(thin[:, None], moments.central_moments(moments.raw_moments(kept)), self.central)
+
+    @cached_property
+    def principal_as_drawn(self) -> axes.PrincipalAxes:
+        """Principal axes from the moments in the plane's own directions."""
+        return axes.principal_axes(self.central)
 
     @cached_property
     def area(self) -> FloatArray:
@@ -128,19 +156,19 @@ def compactness_family(shapes: Shapes, _: MeasureOptions) -> Columns:
 
 def axes_family(shapes: Shapes, _: MeasureOptions) -> Columns:
     """Compute principal axes and their direction."""
-    principal = axes.principal_axes(shapes.central)
+    principal = axes.principal_axes(shapes.aligned)
     return {
         "major_axis_m": principal.major_m,
         "minor_axis_m": principal.minor_m,
         "axis_ratio": principal.ratio,
-        "axis_azimuth_deg": shapes.true_azimuth(principal.azimuth_deg),
+        "axis_azimuth_deg": shapes.true_azimuth(shapes.principal_as_drawn.azimuth_deg),
         "axis_strength": principal.strength,
     }
 
 
 def moments_family(shapes: Shapes, options: MeasureOptions) -> Columns:
     """Compute moment invariants."""
-    normalised = moments.normalised_moments(shapes.central)
+    normalised = moments.normalised_moments(shapes.aligned)
     hu = moments.hu_invariants(normalised)
     affine = moments.affine_invariants(normalised)
     ellipticity, triangularity = moments.rosin_measures(affine[:, 0])
@@ -155,10 +183,10 @@ def moments_family(shapes: Shapes, options: MeasureOptions) -> Columns:
 def spectrum(shapes: Shapes, options: MeasureOptions) -> Columns:
     """Compute the Fourier descriptors of the outline; NaN for a feature without rings."""
     rings = shapes.outline
-    highest = fourier.highest_harmonic(options.samples, options.harmonics)
     if options.spectrum is Spectrum.EXACT:
-        coefficients = fourier.exact_coefficients(rings, highest)
+        coefficients = fourier.exact_coefficients(rings, max(fourier.SUM_HARMONICS, options.harmonics))
     else:
+        highest = fourier.highest_harmonic(options.samples, options.harmonics)
         coefficients = fourier.sampled_coefficients(arclength.resample(rings, options.samples), highest)
     columns = {}
     for name, by_ring in fourier.spectrum_columns(coefficients, options.harmonics).items():

@@ -167,6 +167,9 @@ def _merged(hulls: RingBatch, rings_per_feature: IntArray) -> RingBatch:
 def _point_hulls(x: FloatArray, y: FloatArray, group: IntArray) -> IntArray:
     """Find the hulls of groups of points: indices, group by group, counter-clockwise."""
     order = np.lexsort((y, x, group))
+    # Parts may share a corner, and equal points would each look like no turn at the other.
+    again = (x[order[1:]] == x[order[:-1]]) & (y[order[1:]] == y[order[:-1]]) & (group[order[1:]] == group[order[:-1]])
+    order = order[np.append(True, ~again)]
     lower = _chain(x, y, group, order)
     upper = _chain(x, y, group, order[::-1])
     # Each chain ends where the other begins.

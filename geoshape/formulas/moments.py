@@ -187,7 +187,8 @@ def affine_invariants(normalised: FloatArray) -> FloatArray:
     Returns
     -------
     (n, 3) float64
-        Unchanged by any affine map, reflections included.
+        Unchanged by any affine map, reflections included. Authors differ in the sign of I2; here a triangle's is
+        positive.
 
     References
     ----------
@@ -196,7 +197,7 @@ def affine_invariants(normalised: FloatArray) -> FloatArray:
     """
     _, _, _, n20, n11, n02, n30, n21, n12, n03 = normalised.T
     i1 = n20 * n02 - n11**2
-    i2 = n30**2 * n03**2 - 6.0 * n30 * n21 * n12 * n03 + 4.0 * n30 * n12**3 + 4.0 * n21**3 * n03 - 3.0 * n21**2 * n12**2
+    i2 = 6.0 * n30 * n21 * n12 * n03 - (n30 * n03) ** 2 - 4.0 * (n30 * n12**3 + n21**3 * n03) + 3.0 * (n21 * n12) ** 2
     i3 = n20 * (n21 * n03 - n12**2) - n11 * (n30 * n03 - n21 * n12) + n02 * (n30 * n12 - n21**2)
     return np.column_stack((i1, i2, i3))
 
