@@ -23,6 +23,9 @@ POLAR_STEP_DEG = 0.05
 SEAM_TOLERANCE_DEG = 1e-4
 """How far from the antimeridian, and from each other, the two ways of a detour to the pole may be."""
 
+CLOSING_LATITUDE_DEG = 89.0
+"""From here on an edge round the world, with nothing of its outline beyond, closes the outline at the pole."""
+
 SNAP_DEG = 2e-5
 """How far from the antimeridian, about two metres, outlines are stored that were cut at it."""
 
@@ -134,6 +137,9 @@ def _unwrap_ring(ring: Ring) -> Ring:
     shortest = step - _WHOLE * np.round(step / _WHOLE)
     at_seam = (np.abs(ring[:-1, 0]) == _HALF) & (np.abs(ring[1:, 0]) == _HALF)
     round_the_world = at_seam & (np.abs(step) == _WHOLE) & (ring[:-1, 1] == ring[1:, 1])
+    # Outlines round a pole are often closed a little short of it: such an edge is the pole, not a shore.
+    latitude = np.abs(ring[:-1, 1])
+    round_the_world &= (latitude < CLOSING_LATITUDE_DEG) | (latitude < latitude.max())
     shortest[round_the_world] = step[round_the_world]
     longitude = np.concatenate((ring[:1, 0], ring[0, 0] + np.cumsum(shortest)))
     return np.column_stack((longitude, ring[:, 1]))
