@@ -17,17 +17,17 @@ import shapely
 from geoshape.columns import Column, columns_for
 from geoshape.errors import OptionError
 from geoshape.geometry import read_wkb
-from geoshape.ground.equal_area import GroundPlan, plan_ground
+from geoshape.ground.equal_area import plan_ground
 from geoshape.ground.layer_crs import resolve_crs
-from geoshape.ground.place import open_ground
 from geoshape.layers.lineage import Lineage
 from geoshape.layers.plan import LayerContent, OutputPlan, plan_output
 from geoshape.layers.read import LayerBatch, LayerInfo, open_layer, read_batches
 from geoshape.layers.tables import add_columns
 from geoshape.layers.write import OutputBatch, write_batches
-from geoshape.measuring import Measured, measure_geometries, wkb_of
+from geoshape.measuring import Measured
 from geoshape.options import GROUND_CENTRED, Bounds, MeasureOptions, Parts, Source, Target
 from geoshape.pool import Workers
+from geoshape.task import prepare
 
 NOTABLE_DISTORTION_DEG = 1.0
 """Angular deformation of the ground above which a shape is too wide to be trusted without a thought."""
@@ -163,7 +163,7 @@ def measure_file(
             seconds=round(time.monotonic() - begin, 3),
         )
 
-    workers = Workers(_prepare, (ground, options), jobs)
+    workers = Workers(prepare, (ground, options), jobs)
     batches = _measured(info, plan, workers, tally, progress)
     result = write_batches(plan, batches, lineage)
     return RunSummary(
@@ -217,25 +217,6 @@ def _bounds_for(info: LayerInfo, options: MeasureOptions) -> Bounds | None:
         return None
     west, south, east, north = zip(*boxes, strict=True)
     return min(west), min(south), max(east), max(north)
-
-
-Sent = tuple[list[bytes | None], int]
-
-
-def _prepare(settings: tuple[GroundPlan, MeasureOptions]) -> Callable[[Sent], Measured]:
-    """Open the ground once in a process; the function returned measures one batch."""
-    plan, options = settings
-    ground = open_ground(plan)
-
-    def work(sent: Sent) -> Measured:
-        values, first_row = sent
-        geometries, unreadable = read_wkb(values)
-        measured = measure_geometries(geometries, ground, options, unreadable=unreadable, first_row=first_row)
-        if measured.geometry is None:
-            return measured
-        return replace(measured, geometry=wkb_of(measured.geometry))
-
-    return work
 
 
 def _measured(

@@ -28,7 +28,8 @@ ALLOWED = {
     "layers": {"geometry", "rings", *LEAVES},
     "pool": {"errors"},
     "decide": {"formulas", "rings", "geometry", *LEAVES},
-    "run": {"measuring", "ground", "geometry", "rings", "layers", "pool", "decide", *LEAVES},
+    "task": {"measuring", "ground", "geometry", *LEAVES},
+    "run": {"task", "measuring", "ground", "geometry", "rings", "layers", "pool", "decide", *LEAVES},
     "report": {"run", "decide", "measuring", "layers", "geometry", "rings", *LEAVES},
     "cli": {"run", "decide", "report", "measuring", "inspection", "layers", "pool", *LEAVES},
     # The package re-exports its public names.

@@ -1,6 +1,8 @@
 """Tasks through workers: order, memory, death and interruption."""
 
 import os
+import subprocess
+import sys
 
 import pytest
 
@@ -68,3 +70,13 @@ def test_a_dead_worker_is_named_as_such():
 def test_cores_and_memory_can_be_asked_for_anywhere():
     keep_freed_memory()
     assert usable_cores() >= 1
+
+
+def test_a_worker_imports_neither_pandas_nor_gdal():
+    code = (
+        "import sys, geoshape.task\n"
+        "heavy = ('pandas', 'geopandas', 'pyogrio', 'pyarrow', 'click', 'scipy')\n"
+        "print([name for name in heavy if name in sys.modules])"
+    )
+    printed = subprocess.run([sys.executable, "-c", code], capture_output=True, text=True, check=True).stdout
+    assert printed == "[]\n"

@@ -7,7 +7,6 @@ An outline z(s) = x + iy, walked once at unit speed, is the sum of harmonics Z_k
 from __future__ import annotations
 
 import numpy as np
-import scipy.fft
 
 from geoshape.columns import amplitude_name
 from geoshape.formulas.arclength import ComplexArray, arc_positions, edge_lengths
@@ -46,7 +45,7 @@ def sampled_coefficients(points: ComplexArray, highest: int) -> ComplexArray:
     (n, 2 * highest + 1) complex128
         Coefficients for k = -highest ... highest.
     """
-    transform = np.asarray(scipy.fft.fft(points, axis=1, norm="forward"))
+    transform = np.fft.fft(points, axis=1, norm="forward")
     return np.concatenate((transform[:, -highest:], transform[:, : highest + 1]), axis=1)
 
 
