@@ -248,7 +248,7 @@ def areal_scale(crs: pyproj.CRS, area: tuple[FloatArray, FloatArray]) -> tuple[f
     shape = crs.ellipsoid
     if shape is None or not len(area[0]):
         return None
-    projection = pyproj.Proj(crs)
+    projection = unfolded(crs)
     unit_m = crs.axis_info[0].unit_conversion_factor
     longitude, latitude = (np.radians(values) for values in area)
     east, west = (
@@ -267,6 +267,12 @@ def areal_scale(crs: pyproj.CRS, area: tuple[FloatArray, FloatArray]) -> tuple[f
         scale = np.abs(drawn) * unit_m**2 / true
     scale = scale[np.isfinite(scale)]
     return (float(scale.min()), float(scale.max())) if len(scale) else None
+
+
+def unfolded(definition: pyproj.CRS | str | None) -> pyproj.Proj:
+    """Give a projection whose longitudes run on beyond its far meridian, so that what crosses it stays whole."""
+    text = pyproj.Proj(definition).srs
+    return pyproj.Proj(text if "+over" in text else f"{text} +over")
 
 
 def _projected(projection: pyproj.Proj, longitude: FloatArray, latitude: FloatArray) -> tuple[FloatArray, FloatArray]:

@@ -3,13 +3,17 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from functools import cached_property
 
 import numpy as np
 import pyproj
 
-from geoshape.ground.plane import Centres, Ellipsoid, project
-from geoshape.ground.seams import FRAME_LAYER, FRAME_NORTH
-from geoshape.rings import FloatArray, IntArray
+from geoshape.ground.plane import Centres, Ellipsoid, azimuthal, project
+from geoshape.ground.polar import FRAME_LAYER, FRAME_NORTH
+from geoshape.rings import BoolArray, FloatArray, IntArray
+
+POLE_RADIUS_M = 1e-3
+"""A centre as close to a pole as this is taken to be there, reached along the meridian of 0."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -20,72 +24,137 @@ class Globe:
     ----------
     ellipsoid : Ellipsoid
     inverse : pyproj.Transformer or None
-        From a projected CRS to its own geodetic CRS; None where coordinates are degrees.
+        From a projected CRS to its own geodetic CRS; None where coordinates are longitude and latitude in degrees.
+    unit_deg : float
+        Degrees in what ``inverse`` gives.
     """
 
     ellipsoid: Ellipsoid
-    inverse: pyproj.Transformer | None
+    inverse: pyproj.Transformer | None = None
+    unit_deg: float = 1.0
 
     def degrees(self, x: FloatArray, y: FloatArray, frames: IntArray) -> tuple[FloatArray, FloatArray]:
-        """Take longitude and latitude in degrees, each point in its own frame; infinite where there is none."""
+        """Take longitude, from the layer's own prime meridian, and latitude, in degrees.
+
+        Parameters
+        ----------
+        x, y : (n,) float64
+        frames : (n,) int64
+            Frame of each point.
+
+        Returns
+        -------
+        longitude, latitude : (n,) float64
+            Infinite where the projection has no inverse.
+        """
         if self.inverse is not None:
             longitude, latitude = self.inverse.transform(x, y)
-            return longitude, latitude
+            return self.unit_deg * np.asarray(longitude), self.unit_deg * np.asarray(latitude)
         if not frames.any():
             return x, y
         longitude, latitude = x.copy(), y.copy()
         polar = frames != FRAME_LAYER
-        radians, sine, cosine = self._from_pole(x[polar], y[polar], frames[polar])
-        longitude[polar] = np.degrees(radians)
-        latitude[polar] = np.degrees(self.ellipsoid.geographic_latitude(sine, cosine))
+        at = self.from_pole(x[polar], y[polar], frames[polar])
+        longitude[polar] = np.degrees(at.longitude_rad)
+        latitude[polar] = np.degrees(self.ellipsoid.geographic_latitude(at.sine, at.cosine))
         return longitude, latitude
 
-    def sphere(self, x: FloatArray, y: FloatArray, frames: IntArray) -> tuple[FloatArray, FloatArray, FloatArray]:
-        """Take longitude in radians, and sine and cosine of the authalic latitude."""
-        if not frames.any():
-            longitude, latitude = self.degrees(x, y, frames)
-            with np.errstate(invalid="ignore"):
-                return np.radians(longitude), *self.ellipsoid.authalic(np.radians(latitude))
-        polar = frames != FRAME_LAYER
-        longitude, sine, cosine = (np.empty(len(x)) for _ in range(3))
-        longitude[~polar] = np.radians(x[~polar])
-        sine[~polar], cosine[~polar] = self.ellipsoid.authalic(np.radians(y[~polar]))
-        longitude[polar], sine[polar], cosine[polar] = self._from_pole(x[polar], y[polar], frames[polar])
-        return longitude, sine, cosine
+    def from_pole(self, x: FloatArray, y: FloatArray, frames: IntArray) -> SpherePoints:
+        """Take places on the authalic sphere of points on a polar plane.
 
-    def _from_pole(self, x: FloatArray, y: FloatArray, frames: IntArray) -> tuple[FloatArray, FloatArray, FloatArray]:
+        The pole itself is put on the meridian of 0.
+        """
         sign = np.where(frames == FRAME_NORTH, 1.0, -1.0)
-        share = (x * x + y * y) / (2.0 * self.ellipsoid.authalic_radius_m**2)
-        longitude = np.arctan2(x, -sign * y)
-        return longitude, sign * (1.0 - share), np.sqrt(np.maximum(share * (2.0 - share), 0.0))
+        distance2 = x * x + y * y
+        share = distance2 / (2.0 * self.ellipsoid.authalic_radius_m**2)
+        at_pole = distance2 <= POLE_RADIUS_M**2
+        longitude = np.where(at_pole, 0.0, np.arctan2(x, -sign * y))
+        share = np.where(at_pole, 0.0, share)
+        return SpherePoints(longitude, sign * (1.0 - share), np.sqrt(np.maximum(share * (2.0 - share), 0.0)))
+
+
+@dataclass(frozen=True, eq=False)
+class SpherePoints:
+    """Places on the authalic sphere.
+
+    Attributes
+    ----------
+    longitude_rad, sine, cosine : (n,) float64
+        Longitude; sine and cosine of the authalic latitude.
+    """
+
+    longitude_rad: FloatArray
+    sine: FloatArray
+    cosine: FloatArray
 
 
 @dataclass(frozen=True, eq=False)
 class CentredMap:
     """Maps each feature onto the plane of its own centre.
 
+    A feature on a polar plane whose centre is the pole, or that reaches beyond the equator, stays on that plane: a
+    centre elsewhere could have its opposite, which no plane can show, inside the feature.
+
     Attributes
     ----------
     globe : Globe
     origin : (n_features, 2) float64
+        What was subtracted from coordinates of the layer.
+    middle : (n_features, 2) float64
+        Each centre, relative to the origin.
     frames : (n_features,) int64
-    centres : Centres, (n_features,)
+    keeps_pole : (n_features,) bool
+        Features that stay on the plane of their pole.
     """
 
     globe: Globe
     origin: FloatArray
+    middle: FloatArray
     frames: IntArray
-    centres: Centres
+    keeps_pole: BoolArray
+
+    @cached_property
+    def centre_deg(self) -> FloatArray:
+        """(n_features, 2) longitude, from the layer's own prime meridian, and latitude of each centre."""
+        middle = self.origin + np.where(self.keeps_pole[:, None], -self.origin, self.middle)
+        return np.column_stack(self.globe.degrees(middle[:, 0], middle[:, 1], self.frames))
+
+    @cached_property
+    def _centres(self) -> Centres:
+        with np.errstate(invalid="ignore"):
+            return Centres.at(np.radians(self.centre_deg[:, 1]), self.globe.ellipsoid)
 
     def __call__(self, x: FloatArray, y: FloatArray, feature: IntArray) -> tuple[FloatArray, FloatArray]:
         """Map points given relative to the origins of their features."""
-        longitude, sine, cosine = self.globe.sphere(
-            x + self.origin[feature, 0], y + self.origin[feature, 1], self.frames[feature]
+        polar = self.frames[feature] != FRAME_LAYER if self.frames.any() else None
+        if polar is None:
+            return self._from_layer(x, y, feature)
+        mapped = np.empty((2, len(x)))
+        mapped[:, ~polar] = self._from_layer(x[~polar], y[~polar], feature[~polar])
+        mapped[:, polar] = self._from_pole(x[polar], y[polar], feature[polar])
+        return mapped[0], mapped[1]
+
+    def _from_layer(self, x: FloatArray, y: FloatArray, feature: IntArray) -> tuple[FloatArray, FloatArray]:
+        if self.globe.inverse is None:
+            # Coordinates that are near each other already: their differences keep all digits.
+            points, middle = (x, y), self.middle
+        else:
+            in_layer = np.zeros(len(x), dtype=np.int64)
+            points = self.globe.degrees(x + self.origin[feature, 0], y + self.origin[feature, 1], in_layer)
+            middle = self.centre_deg
+        with np.errstate(invalid="ignore"):
+            return project(points, middle, feature, self._centres, self.globe.ellipsoid)
+
+    def _from_pole(self, x: FloatArray, y: FloatArray, feature: IntArray) -> tuple[FloatArray, FloatArray]:
+        x, y = x + self.origin[feature, 0], y + self.origin[feature, 1]
+        points = self.globe.from_pole(x, y, self.frames[feature])
+        centres = self._centres.take(feature)
+        offset = points.longitude_rad - np.radians(self.centre_deg[feature, 0])
+        moved_x, moved_y = azimuthal(
+            offset, points.sine - centres.sine, points.cosine, centres, self.globe.ellipsoid.authalic_radius_m
         )
-        with np.errstate(invalid="ignore", divide="ignore"):
-            return project(
-                longitude, (sine, cosine), self.centres.take(feature), self.globe.ellipsoid.authalic_radius_m
-            )
+        keeps = self.keeps_pole[feature]
+        return np.where(keeps, x, moved_x), np.where(keeps, y, moved_y)
 
 
 @dataclass(frozen=True, eq=False)

@@ -11,17 +11,23 @@ import shapely
 from numpy.typing import NDArray
 
 from geoshape.ground import edges, seams
-from geoshape.ground.equal_area import GroundKind, GroundPlan, angle_unit_deg, meridian_deg
+from geoshape.ground.equal_area import GroundKind, GroundPlan, angle_unit_deg, meridian_deg, unfolded
 from geoshape.ground.mapping import CentredMap, Globe, SharedMap
-from geoshape.ground.plane import Centres, Ellipsoid, distortion_deg
+from geoshape.ground.plane import Ellipsoid, distortion_deg
 from geoshape.rings import BoolArray, FloatArray, IntArray, RingBatch, oriented
 
 ObjectArray = NDArray[np.object_]
 
-MAX_FACTOR_VERTICES = 64
-"""Vertices of an outline at which the deformation of a shared projection is looked up; evenly spread over it."""
+SAMPLE_M, MIN_SAMPLES, MAX_SAMPLES = 5_000.0, 4, 64
+"""Deformation of a projection is looked up at a vertex for every so many metres that a feature is wide."""
 
-FAR_MERIDIAN_DEG = 180.0
+TORN = 0.02
+"""Share of a feature's area by which a shared projection may miss it; beyond, the projection tears the feature."""
+
+MAX_LATITUDE_DEG = 90.0
+
+NO_PLACE = "coordinates lie outside what the layer's CRS can hold"
+NO_PLANE = "the ground's projection has no place for it, or tears it; use --ground centred"
 
 
 @dataclass(frozen=True, eq=False)
@@ -39,7 +45,9 @@ class Placed:
     is_placed : (n_features,) bool
         False where a coordinate has no place on the globe or the plane.
     centre_deg : (n_features, 2) float64
-        Longitude and latitude of the centre; NaN where there is none.
+        Longitude, from the layer's own prime meridian, and latitude of the centre; NaN where there is none.
+    faults : dict of int to str
+        Why a feature could not be placed.
     """
 
     batch: RingBatch
@@ -47,6 +55,7 @@ class Placed:
     distortion_deg: FloatArray
     is_placed: BoolArray
     centre_deg: FloatArray
+    faults: dict[int, str]
 
 
 def open_ground(plan: GroundPlan) -> Ground:
@@ -75,18 +84,23 @@ class Ground:
         if crs is None or crs.ellipsoid is None:
             raise ValueError("a ground without a CRS has no globe")
         major, minor = crs.ellipsoid.semi_major_metre, crs.ellipsoid.semi_minor_metre
-        inverse = None
-        if not crs.is_geographic:
-            inverse = pyproj.Transformer.from_crs(crs, crs.geodetic_crs, always_xy=True)
-        return Globe(Ellipsoid(major, 1.0 - (minor / major) ** 2), inverse)
+        ellipsoid = Ellipsoid(major, 1.0 - (minor / major) ** 2)
+        if self.plan.is_geographic or crs.geodetic_crs is None:
+            return Globe(ellipsoid)
+        inverse = pyproj.Transformer.from_crs(crs, crs.geodetic_crs, always_xy=True)
+        return Globe(ellipsoid, inverse, angle_unit_deg(crs))
+
+    @cached_property
+    def _meridian_deg(self) -> float:
+        return meridian_deg(self._crs) if self._crs is not None else 0.0
 
     @cached_property
     def _target(self) -> pyproj.Proj:
-        return pyproj.Proj(self.plan.target_wkt)
+        return unfolded(self.plan.target_wkt)
 
     @cached_property
-    def _target_crs(self) -> pyproj.CRS:
-        return pyproj.CRS(self.plan.target_wkt)
+    def _target_unit_m(self) -> float:
+        return float(pyproj.CRS(self.plan.target_wkt).axis_info[0].unit_conversion_factor)
 
     @cached_property
     def _own_projection(self) -> pyproj.Proj | None:
@@ -122,6 +136,12 @@ class Ground:
         Returns
         -------
         Placed
+
+        Notes
+        -----
+        On a centred plane y points to true north, so that the convergence is 0. A centre exactly on a pole counts as
+        reached along the meridian of 0: there y goes on from that meridian across the pole, in the south from the pole
+        along it.
         """
         match self.plan.kind:
             case GroundKind.PLANE:
@@ -134,114 +154,139 @@ class Ground:
     def _on_coordinates(self, batch: RingBatch) -> Placed:
         n = batch.n_features
         unit = self.plan.unit_m
-        moved = batch.moved(unit * batch.x, unit * batch.y, batch.origin)
+        moved = oriented(batch.moved(unit * batch.x, unit * batch.y, batch.origin))
         centre = np.full((n, 2), np.nan)
         convergence, distortion = np.zeros(n), np.full(n, np.nan)
         if self._own_projection is not None:
             frames = np.zeros(n, dtype=np.int64)
             centre = self._centres_deg(batch, frames)
-            convergence = _convergence(self._own_projection, centre)
-            distortion = self._deformation(batch, frames, self._own_projection)
-        return Placed(oriented(moved), convergence, distortion, np.ones(n, dtype=np.bool_), centre)
+            convergence = self._convergence(self._own_projection, centre)
+            distortion = self._deformation(batch, frames, self._own_projection, _reach(moved))
+        return Placed(moved, convergence, distortion, np.ones(n, dtype=np.bool_), centre, {})
 
     def _on_centred(self, batch: RingBatch, frames: IntArray) -> Placed:
-        middle = batch.origin + batch.planar_centroid
-        sphere = self._globe.sphere(middle[:, 0], middle[:, 1], frames)
-        with np.errstate(invalid="ignore", divide="ignore"):
-            centres = Centres.at(sphere, self._globe.ellipsoid)
-        to_plane = CentredMap(self._globe, batch.origin, frames, centres)
-        placed, is_placed = self._mapped(batch, to_plane)
-        distance = np.sqrt(placed.x**2 + placed.y**2)
-        farthest = np.zeros(batch.n_features)
-        if batch.n_rings:
-            np.maximum.at(farthest, batch.ring_feature, np.maximum.reduceat(distance, placed.ring_start[:-1]))
-        distortion = distortion_deg(farthest, self._globe.ellipsoid.authalic_radius_m)
-        longitude, sine, cosine = sphere
-        latitude = self._globe.ellipsoid.geographic_latitude(sine, cosine)
-        centre = np.degrees(np.column_stack((longitude, latitude)))
-        return Placed(placed, np.zeros(batch.n_features), distortion, is_placed, centre)
+        to_plane = self._centred_map(batch, frames)
+        placed, lost = self._mapped(batch, frames, to_plane)
+        lost |= self._is_beyond_pole(batch, frames)
+        distortion = distortion_deg(_reach(placed), self._globe.ellipsoid.authalic_radius_m)
+        faults = dict.fromkeys(np.flatnonzero(lost).tolist(), NO_PLACE)
+        return Placed(placed, np.zeros(batch.n_features), distortion, ~lost, to_plane.centre_deg, faults)
 
     def _on_shared(self, batch: RingBatch, frames: IntArray) -> Placed:
         centre = self._centres_deg(batch, frames)
-        east, north = self._target(centre[:, 0], centre[:, 1])
-        middle = np.column_stack((east, north))
-        offset = meridian_deg(self._crs) if self._crs is not None else 0.0
-        unit = self._target_crs.axis_info[0].unit_conversion_factor
-        to_plane = SharedMap(self._globe, self._target, unit, offset, batch.origin, frames, middle)
-        placed, is_placed = self._mapped(batch, to_plane)
-        is_placed &= ~self._is_torn(batch, frames)
-        distortion = self._deformation(batch, frames, self._target)
-        return Placed(placed, _convergence(self._target, centre), distortion, is_placed, centre)
+        with np.errstate(invalid="ignore"):
+            east, north = self._target(centre[:, 0] + self._meridian_deg, centre[:, 1])
+        to_plane = SharedMap(
+            self._globe,
+            self._target,
+            self._target_unit_m,
+            self._meridian_deg,
+            batch.origin,
+            frames,
+            np.column_stack((east, north)),
+        )
+        placed, lost = self._mapped(batch, frames, to_plane)
+        lost |= self._is_beyond_pole(batch, frames)
+        torn = self._is_torn(batch, frames, placed) | ~np.isfinite(east)
+        faults = dict.fromkeys(np.flatnonzero(lost | torn).tolist(), NO_PLANE)
+        distortion = self._deformation(batch, frames, self._target, _reach(placed))
+        return Placed(placed, self._convergence(self._target, centre), distortion, ~(lost | torn), centre, faults)
 
-    def _mapped(self, batch: RingBatch, to_plane: edges.ToPlane) -> tuple[RingBatch, BoolArray]:
+    def _centred_map(self, batch: RingBatch, frames: IntArray) -> CentredMap:
+        middle = batch.planar_centroid
+        keeps_pole = np.zeros(batch.n_features, dtype=np.bool_)
+        polar = np.flatnonzero(frames != seams.FRAME_LAYER)
+        if len(polar):
+            keeps_pole[polar] = (
+                _reach(batch, at_pole=True)[polar] > np.sqrt(2.0) * self._globe.ellipsoid.authalic_radius_m
+            )
+        return CentredMap(self._globe, batch.origin, middle, frames, keeps_pole)
+
+    def _mapped(self, batch: RingBatch, frames: IntArray, to_plane: edges.ToPlane) -> tuple[RingBatch, BoolArray]:
+        """Map features, and tell which of them have a vertex without a place."""
         if self.plan.is_subdivided:
-            batch = edges.cut(batch, edges.pieces(batch, to_plane))
+            radius_m = self._globe.ellipsoid.semi_major_m
+            batch = edges.cut(batch, edges.pieces(batch, to_plane, radius_m, self._unit_m(frames)))
         x, y = to_plane(batch.x, batch.y, batch.vertex_feature)
-        lost = ~(np.isfinite(x) & np.isfinite(y))
-        is_placed = np.ones(batch.n_features, dtype=np.bool_)
-        if lost.any():
-            is_placed[batch.vertex_feature[lost]] = False
-            x[lost], y[lost] = 0.0, 0.0
-        return oriented(batch.moved(x, y, np.zeros_like(batch.origin))), is_placed
+        nowhere = ~(np.isfinite(x) & np.isfinite(y))
+        lost = np.zeros(batch.n_features, dtype=np.bool_)
+        if nowhere.any():
+            lost[batch.vertex_feature[nowhere]] = True
+            x[nowhere], y[nowhere] = 0.0, 0.0
+        return oriented(batch.moved(x, y, np.zeros_like(batch.origin))), lost
+
+    def _unit_m(self, frames: IntArray) -> FloatArray:
+        """Take metres in a unit of each feature's coordinates, roughly: a degree is one of latitude."""
+        radius_m = self._globe.ellipsoid.semi_major_m
+        if self.plan.is_geographic:
+            return np.where(frames == seams.FRAME_LAYER, np.radians(radius_m), 1.0)
+        axes = self._crs.axis_info if self._crs is not None else []
+        is_angle = self._crs is not None and self._crs.is_geographic
+        unit = float(axes[0].unit_conversion_factor) if axes else 1.0
+        return np.full(len(frames), unit * radius_m if is_angle else unit)
+
+    def _is_beyond_pole(self, batch: RingBatch, frames: IntArray) -> BoolArray:
+        beyond = np.zeros(batch.n_features, dtype=np.bool_)
+        if not self.plan.is_geographic or not batch.n_rings:
+            return beyond
+        first = batch.ring_start[:-1]
+        middle = batch.origin[batch.ring_feature, 1]
+        highest = np.maximum(
+            np.abs(np.maximum.reduceat(batch.y, first) + middle), np.abs(np.minimum.reduceat(batch.y, first) + middle)
+        )
+        is_outside = (highest > MAX_LATITUDE_DEG) & (frames[batch.ring_feature] == seams.FRAME_LAYER)
+        beyond[batch.ring_feature[is_outside]] = True
+        return beyond
+
+    def _is_torn(self, batch: RingBatch, frames: IntArray, placed: RingBatch) -> BoolArray:
+        """Tell which features have another area on the shared plane than on their own."""
+        to_own = self._centred_map(batch, frames)
+        own, _ = self._mapped(batch, frames, to_own)
+        area = own.sum_ring_values(own.ring_signed_area)
+        drawn = placed.sum_ring_values(placed.ring_signed_area)
+        with np.errstate(invalid="ignore"):
+            return np.asarray(np.abs(drawn - area) > TORN * np.abs(area))
 
     def _centres_deg(self, batch: RingBatch, frames: IntArray) -> FloatArray:
-        """Give centres by longitude and latitude from Greenwich."""
         middle = batch.origin + batch.planar_centroid
-        longitude, latitude = self._globe.degrees(middle[:, 0], middle[:, 1], frames)
-        offset = meridian_deg(self._crs) if self._crs is not None else 0.0
-        return np.column_stack((np.asarray(longitude) + offset, latitude))
+        return np.column_stack(self._globe.degrees(middle[:, 0], middle[:, 1], frames))
 
-    def _is_torn(self, batch: RingBatch, frames: IntArray) -> BoolArray:
-        """Tell which features cross the far meridian of a projection that folds longitudes there."""
-        torn = np.zeros(batch.n_features, dtype=np.bool_)
-        if not batch.n_rings or not self.plan.is_geographic or "+over" in (self.plan.target_wkt or ""):
-            return torn
-        meridian = _central_meridian(self._target_crs)
-        if meridian is None:
-            return torn
-        longitude, _ = self._globe.degrees(*_absolute(batch), frames[batch.vertex_feature])
-        turn = np.floor((longitude - meridian + FAR_MERIDIAN_DEG) / (2.0 * FAR_MERIDIAN_DEG))
-        first = batch.ring_start[:-1]
-        low, high = np.minimum.reduceat(turn, first), np.maximum.reduceat(turn, first)
-        torn[batch.ring_feature[low != high]] = True
-        return torn
+    def _convergence(self, projection: pyproj.Proj, centre_deg: FloatArray) -> FloatArray:
+        """Give the azimuth of grid north; 0 where the projection does not tell."""
+        factors = projection.get_factors(centre_deg[:, 0] + self._meridian_deg, centre_deg[:, 1], errcheck=False)
+        convergence = np.asarray(factors.meridian_convergence, dtype=np.float64)
+        return np.where(np.isfinite(convergence) & (np.abs(convergence) <= 360.0), convergence, 0.0)
 
-    def _deformation(self, batch: RingBatch, frames: IntArray, projection: pyproj.Proj) -> FloatArray:
-        """Look up the largest angular deformation over the vertices of each feature, or over 64 spread among them."""
+    def _deformation(
+        self, batch: RingBatch, frames: IntArray, projection: pyproj.Proj, reach_m: FloatArray
+    ) -> FloatArray:
+        """Look up the largest angular deformation over vertices spread evenly along each feature's rings."""
         largest = np.full(batch.n_features, np.nan)
         if not batch.n_rings:
             return largest
+        wanted = np.clip(np.nan_to_num(2.0 * reach_m / SAMPLE_M), MIN_SAMPLES, MAX_SAMPLES).astype(np.int64)
         count = batch.sum_ring_values(batch.ring_size.astype(np.float64)).astype(np.int64)
-        step = np.maximum(-(-count // MAX_FACTOR_VERTICES), 1)[batch.vertex_feature]
+        step = np.maximum(-(-count // wanted), 1)[batch.vertex_feature]
         first = np.cumsum(count) - count
         chosen = np.flatnonzero((np.arange(batch.n_vertices) - first[batch.vertex_feature]) % step == 0)
-        x, y = _absolute(batch)
         owner = batch.vertex_feature[chosen]
-        longitude, latitude = self._globe.degrees(x[chosen], y[chosen], frames[owner])
-        offset = meridian_deg(self._crs) if self._crs is not None else 0.0
-        factors = projection.get_factors(np.asarray(longitude) + offset, latitude, errcheck=False)
+        longitude, latitude = self._globe.degrees(
+            batch.x[chosen] + batch.origin[owner, 0], batch.y[chosen] + batch.origin[owner, 1], frames[owner]
+        )
+        factors = projection.get_factors(np.asarray(longitude) + self._meridian_deg, latitude, errcheck=False)
         deformation = np.asarray(factors.angular_distortion, dtype=np.float64)
         deformation[~np.isfinite(deformation) | (np.abs(deformation) > 180.0)] = np.nan
         np.fmax.at(largest, owner, deformation)
         return largest
 
 
-def _central_meridian(crs: pyproj.CRS) -> float | None:
-    """Find the meridian opposite to which a projection is cut; None where it is whole all round, or does not tell."""
-    operation = crs.coordinate_operation
-    if operation is None or "zimuthal" in operation.method_name or "tereographic" in operation.method_name:
-        return None
-    found = [float(parameter.value) for parameter in operation.params if parameter.name.startswith("Longitude of")]
-    return found[0] if found else 0.0
-
-
-def _absolute(batch: RingBatch) -> tuple[FloatArray, FloatArray]:
-    by_vertex = batch.origin[batch.vertex_feature]
-    return batch.x + by_vertex[:, 0], batch.y + by_vertex[:, 1]
-
-
-def _convergence(projection: pyproj.Proj, centre_deg: FloatArray) -> FloatArray:
-    """Give the azimuth of grid north; 0 where the projection does not tell."""
-    factors = projection.get_factors(centre_deg[:, 0], centre_deg[:, 1], errcheck=False)
-    convergence = np.asarray(factors.meridian_convergence, dtype=np.float64)
-    return np.where(np.isfinite(convergence) & (np.abs(convergence) <= 360.0), convergence, 0.0)
+def _reach(batch: RingBatch, *, at_pole: bool = False) -> FloatArray:
+    """Measure how far each feature reaches from its local origin, or from 0, the pole of a polar plane."""
+    farthest = np.zeros(batch.n_features)
+    if batch.n_rings:
+        x, y = batch.x, batch.y
+        if at_pole:
+            x, y = x + batch.origin[batch.vertex_feature, 0], y + batch.origin[batch.vertex_feature, 1]
+        square = np.maximum.reduceat(x * x + y * y, batch.ring_start[:-1])
+        np.maximum.at(farthest, batch.ring_feature, square)
+    return np.sqrt(farthest)

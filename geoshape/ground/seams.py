@@ -1,7 +1,8 @@
-"""Seams of the globe: outlines that cross the antimeridian, enclose a pole, or were cut at either.
+"""Seams of the globe: outlines that cross the antimeridian, go round a pole, or were cut at either.
 
 Coordinates are longitude and latitude in degrees. Only features wider than 180 degrees are touched: any outline that
-jumps at the antimeridian, and any that goes round a pole, is as wide as that when taken literally.
+jumps at the antimeridian, and any that goes round a pole, is as wide as that when taken literally. What goes round a
+pole is drawn on that pole's plane by `geoshape.ground.polar`.
 """
 
 from __future__ import annotations
@@ -10,26 +11,24 @@ import numpy as np
 import shapely
 from numpy.typing import NDArray
 
-from geoshape.ground.plane import Centres, Ellipsoid, project
-from geoshape.rings import BoolArray, FloatArray, IntArray
+from geoshape.ground.plane import Ellipsoid
+from geoshape.ground.polar import FRAME_LAYER, FRAME_NORTH, FRAME_SOUTH, Ring, drawn_at_pole, pole_of
+from geoshape.rings import BoolArray, IntArray
+
+__all__ = ["FRAME_LAYER", "FRAME_NORTH", "FRAME_SOUTH", "rejoin", "unwrap"]
 
 ObjectArray = NDArray[np.object_]
-
-FRAME_LAYER, FRAME_NORTH, FRAME_SOUTH = 0, 1, 2
-
-POLAR_STEP_DEG = 0.05
-"""Longest step in longitude and latitude of an outline on a polar plane: area and length to about 1e-7."""
-
-SEAM_TOLERANCE_DEG = 1e-4
-"""How far from the antimeridian, and from each other, the two ways of a detour to the pole may be."""
-
-CLOSING_LATITUDE_DEG = 89.0
-"""From here on an edge round the world, with nothing of its outline beyond, closes the outline at the pole."""
 
 SNAP_DEG = 2e-5
 """How far from the antimeridian, about two metres, outlines are stored that were cut at it."""
 
-_HALF, _WHOLE, _POLE = 180.0, 360.0, 90.0
+FULL_TURN_DEG = 1e-9
+"""How much parts together may lack of a full turn and still go round the world."""
+
+NEAR_POLE_DEG = 89.0
+"""Latitude beyond which an edge of a full turn, with nothing of its outline beyond, only closes it on a flat map."""
+
+_HALF, _WHOLE = 180.0, 360.0
 
 
 def unwrap(
@@ -52,14 +51,18 @@ def unwrap(
         Longitudes run on past 180 where an outline crosses the antimeridian.
     frames : (n,) int64
         ``FRAME_LAYER``, or ``FRAME_NORTH`` and ``FRAME_SOUTH`` for outlines round a pole: their coordinates are now
-        metres on the azimuthal equal-area plane of that pole, x to 90 degrees east, y away from the meridian of 0.
+        metres on the azimuthal equal-area plane of that pole, x to 90 degrees east, y to 180 degrees in the north and
+        to 0 in the south.
     is_cut : (n,) bool
         Features with several parts that meet the antimeridian: `rejoin` makes them one.
 
     Notes
     -----
-    Longitudes follow each other by the shortest difference, ring by ring. An edge of exactly 360 degrees between
-    -180 and 180 is taken for an edge round the world along its parallel, except along a pole, where it has no length.
+    Longitudes follow each other by the shortest difference, ring by ring, so that an edge from 170 to -170 crosses the
+    antimeridian. A longer edge can be drawn by a vertex at least every 180 degrees. One edge is taken as it stands: a
+    full turn along a parallel between two edges along the meridian where the map was cut, as in a box from -180 to 180.
+    Parts or rings that together cover all longitudes go round a pole too; of the two poles it is the one the outline
+    touches, else the nearer.
     """
     bounds = shapely.bounds(geometries)
     with np.errstate(invalid="ignore"):
@@ -99,70 +102,90 @@ def rejoin(geometries: ObjectArray, is_cut: BoolArray) -> ObjectArray:
     return joined
 
 
-Ring = FloatArray
-"""(n, 2) longitude and latitude of a ring, its first vertex repeated at the end."""
-
-
 def _unwrap_one(
     geometry: shapely.Geometry, ellipsoid: Ellipsoid, *, is_subdivided: bool
 ) -> tuple[shapely.Geometry, int, bool]:
-    parts = [[_snapped(ring) for ring in _rings(part)] for part in shapely.get_parts(geometry)]
-    touching = sum(bool(np.any(np.abs(part[0][:, 0]) == _HALF)) for part in parts)
+    seam = _seam(geometry)
+    parts = [[_snapped(ring, seam) for ring in _rings(part)] for part in shapely.get_parts(geometry)]
+    touching = 0 if seam is None else sum(bool(np.isin(part[0][:, 0], (seam, seam + _WHOLE)).any()) for part in parts)
     unwrapped = [[_unwrap_ring(ring) for ring in part] for part in parts]
-    turns = [round((ring[-1, 0] - ring[0, 0]) / _WHOLE) for part in unwrapped for ring in part]
-    if any(turns):
-        latitudes = np.concatenate(
-            [ring[:, 1] for ring, turn in zip((r for p in unwrapped for r in p), turns, strict=True) if turn]
-        )
-        frame = FRAME_NORTH if latitudes.mean() > 0 else FRAME_SOUTH
-        polar = [[_to_pole(ring, frame, ellipsoid, is_subdivided=is_subdivided) for ring in part] for part in unwrapped]
-        return _assembled(polar), frame, touching > 1
-    return _assembled(_in_one_window(unwrapped)), FRAME_LAYER, touching > 1
+    if _go_round(unwrapped):
+        frame = pole_of([ring for part in unwrapped for ring in part])
+        # Parts valid on the flat map are valid on the globe: there only slits and shared edges are taken out.
+        is_mended = bool(shapely.is_valid(shapely.get_parts(_assembled(parts))).all())
+        polar = drawn_at_pole(unwrapped, frame, ellipsoid, is_subdivided=is_subdivided, is_mended=is_mended)
+        return polar, frame, False
+    anchor = seam + _WHOLE if seam is not None and touching > 1 else _middle(_widest(unwrapped)[0])
+    return _assembled(_in_one_window(unwrapped, anchor)), FRAME_LAYER, touching > 1
+
+
+def _seam(geometry: shapely.Geometry) -> float | None:
+    """Find the western longitude of the cut of a feature that reaches from one side of it to the other."""
+    west, _, east, _ = shapely.bounds(geometry).tolist()
+    seam = float(np.round(west))
+    if abs(west - seam) <= SNAP_DEG and abs(east - seam - _WHOLE) <= SNAP_DEG:
+        return seam
+    return float(west) if east - west == _WHOLE else None
 
 
 def _rings(part: shapely.Geometry) -> list[Ring]:
     return [shapely.get_coordinates(ring) for ring in shapely.get_rings(part)]
 
 
-def _snapped(ring: Ring) -> Ring:
-    """Put vertices onto the antimeridian that were cut there and stored a little beside it."""
-    longitude = ring[:, 0]
-    near = np.abs(np.abs(longitude) - _HALF) <= SNAP_DEG
-    return np.column_stack((np.where(near, np.copysign(_HALF, longitude), longitude), ring[:, 1]))
+def _snapped(ring: Ring, seam: float | None) -> Ring:
+    """Put vertices onto the cut that were cut there and stored a little beside it."""
+    if seam is None:
+        return ring
+    longitude = ring[:, 0].copy()
+    for side in (seam, seam + _WHOLE):
+        longitude[np.abs(longitude - side) <= SNAP_DEG] = side
+    return np.column_stack((longitude, ring[:, 1]))
 
 
 def _unwrap_ring(ring: Ring) -> Ring:
-    ring = _without_turns_at_pole(ring)
     step = np.diff(ring[:, 0])
     shortest = step - _WHOLE * np.round(step / _WHOLE)
-    at_seam = (np.abs(ring[:-1, 0]) == _HALF) & (np.abs(ring[1:, 0]) == _HALF)
-    round_the_world = at_seam & (np.abs(step) == _WHOLE) & (ring[:-1, 1] == ring[1:, 1])
-    # Outlines round a pole are often closed a little short of it: such an edge is the pole, not a shore.
-    latitude = np.abs(ring[:-1, 1])
-    round_the_world &= (latitude < CLOSING_LATITUDE_DEG) | (latitude < latitude.max())
-    shortest[round_the_world] = step[round_the_world]
+    is_turn = (np.abs(step) == _WHOLE) & (ring[:-1, 1] == ring[1:, 1])
+    if is_turn.any():
+        # Where the neighbours run along the cut, the edge is one side of a box round the world.
+        at_cut = step == 0.0
+        height = np.abs(ring[:-1, 1])
+        closes = (height >= NEAR_POLE_DEG) & (height == height.max())
+        is_box = is_turn & np.roll(at_cut, 1) & np.roll(at_cut, -1) & ~closes
+        if _touches_both_poles(ring):
+            is_box |= is_turn & (ring[:-1, 1] < 0.0)
+        shortest[is_box] = step[is_box]
     longitude = np.concatenate((ring[:1, 0], ring[0, 0] + np.cumsum(shortest)))
     return np.column_stack((longitude, ring[:, 1]))
 
 
-def _without_turns_at_pole(ring: Ring) -> Ring:
-    """Give vertices at a pole, which have any longitude, that of the vertex before them."""
-    at_pole = np.abs(ring[:, 1]) == _POLE
-    if not at_pole.any() or at_pole.all():
-        return ring
-    before = np.maximum.accumulate(np.where(at_pole, -1, np.arange(len(ring))))
-    before = np.where(before < 0, int(np.argmin(at_pole)), before)
-    return np.column_stack((ring[before, 0], ring[:, 1]))
+def _touches_both_poles(ring: Ring) -> bool:
+    return bool(ring[:, 1].min() <= -NEAR_POLE_DEG and ring[:, 1].max() >= NEAR_POLE_DEG)
+
+
+def _go_round(parts: list[list[Ring]]) -> bool:
+    """Tell whether a ring makes a full turn, or parts together cover all longitudes."""
+    if any(abs(ring[-1, 0] - ring[0, 0]) > _HALF for part in parts for ring in part):
+        return True
+    west = np.array([part[0][:, 0].min() for part in parts])
+    east = np.array([part[0][:, 0].max() for part in parts])
+    start = np.mod(west, _WHOLE)
+    order = np.argsort(start)
+    reach = np.maximum.accumulate((start + east - west)[order]) + FULL_TURN_DEG
+    follows = np.append(start[order][1:], start.min() + _WHOLE)
+    return bool((follows <= reach).all())
 
 
 def _middle(ring: Ring) -> float:
     return float(ring[:, 0].min() + ring[:, 0].max()) / 2.0
 
 
-def _in_one_window(parts: list[list[Ring]]) -> list[list[Ring]]:
-    """Move parts by whole turns next to the widest, and holes into their exteriors."""
-    widest = max(parts, key=lambda part: float(np.ptp(part[0][:, 0])))
-    anchor = _middle(widest[0])
+def _widest(parts: list[list[Ring]]) -> list[Ring]:
+    return max(parts, key=lambda part: float(np.ptp(part[0][:, 0])))
+
+
+def _in_one_window(parts: list[list[Ring]], anchor: float) -> list[list[Ring]]:
+    """Move parts by whole turns next to a longitude, and holes into their exteriors."""
     moved = []
     for exterior, *holes in parts:
         shifted = _turned(exterior, anchor)
@@ -173,52 +196,6 @@ def _in_one_window(parts: list[list[Ring]]) -> list[list[Ring]]:
 def _turned(ring: Ring, near: float) -> Ring:
     turns = np.round((near - _middle(ring)) / _WHOLE)
     return np.asarray(ring + np.array([_WHOLE * turns, 0.0]))
-
-
-def _to_pole(ring: Ring, frame: int, ellipsoid: Ellipsoid, *, is_subdivided: bool) -> Ring:
-    sign = 1.0 if frame == FRAME_NORTH else -1.0
-    ring = _without_pole_detour(ring, sign * _POLE)
-    if is_subdivided:
-        ring = _subdivided(ring)
-    radians = np.radians(ring)
-    sine, cosine = ellipsoid.authalic(radians[:, 1])
-    n = len(ring)
-    centres = Centres(np.zeros(n), np.full(n, sign), np.zeros(n), np.ones(n))
-    return np.column_stack(project(radians[:, 0], (sine, cosine), centres, ellipsoid.authalic_radius_m))
-
-
-def _without_pole_detour(ring: Ring, pole: float) -> Ring:
-    """Drop the way along the antimeridian to the pole and back, which closes an outline on a flat map only.
-
-    Real layers go there and back on longitudes that differ in the last digits, and stop short of the pole.
-    """
-    turn = np.array([[_WHOLE * np.round((ring[-1, 0] - ring[0, 0]) / _WHOLE), 0.0]])
-    points = ring[:-1][ring[:-1, 1] != pole]
-    on_seam = np.abs(np.mod(points[:, 0], _WHOLE) - _HALF) <= SEAM_TOLERANCE_DEG
-    if len(points) < 3 or on_seam.all():
-        return np.concatenate((points, points[:1] + turn)) if len(points) else ring
-    first_off = int(np.argmin(on_seam))
-    points = np.concatenate((points[first_off:], points[:first_off] + turn))
-    on_seam = np.roll(on_seam, -first_off)
-    keep = np.ones(len(points), dtype=np.bool_)
-    starts = np.flatnonzero(on_seam & ~np.roll(on_seam, 1))
-    ends = np.flatnonzero(on_seam & ~np.roll(on_seam, -1))
-    for start, end in zip(starts.tolist(), ends.tolist(), strict=True):
-        # There and back: the run begins and ends at the same place of the shore.
-        if abs(points[start, 1] - points[end, 1]) <= SEAM_TOLERANCE_DEG:
-            keep[start + 1 : end] = False
-    points = points[keep]
-    return np.concatenate((points, points[:1] + turn))
-
-
-def _subdivided(ring: Ring) -> Ring:
-    step = np.diff(ring, axis=0)
-    # The edge between the two ends of a full turn has no length: no piece of it.
-    pieces = np.ceil(np.abs(step).max(axis=1) / POLAR_STEP_DEG).astype(np.int64)
-    edge = np.repeat(np.arange(len(step)), pieces)
-    piece = np.arange(len(edge)) - np.repeat(np.cumsum(pieces) - pieces, pieces)
-    points = ring[edge] + step[edge] * (piece / pieces[edge])[:, None]
-    return np.concatenate((points, points[:1]))
 
 
 def _assembled(parts: list[list[Ring]]) -> shapely.Geometry:

@@ -266,6 +266,10 @@ class TestPlans:
         batch = placed_on("plane", square, 2264).batch
         assert batch.sum_ring_values(batch.ring_signed_area)[0] == pytest.approx((1000 * 1200 / 3937) ** 2, rel=1e-12)
 
+    @pytest.mark.parametrize("name", ["EPSG:6933", "EPSG:8857"])
+    def test_the_far_meridian_is_no_fault_of_an_equal_area_crs(self, name):
+        assert plan_ground(WGS84, (-180, -80, 180, 80), MeasureOptions(ground=name)).warnings == ()
+
     def test_grads_and_another_meridian(self):
         # EPSG:4807 counts grads from Paris, 2 degrees 20 minutes 14.025 seconds east of Greenwich.
         grads = box(0, 50, 1, 51)
@@ -327,10 +331,22 @@ class TestWhatHasNoPlace:
         placed = placed_on("centred", box(1e9, 1e9, 1e9 + 10, 1e9 + 10), 32632)
         assert placed.is_placed.tolist() == [False]
 
-    def test_a_shape_that_a_named_crs_tears_is_not_placed(self):
+    def test_a_cap_that_a_cylinder_cannot_hold_is_not_placed(self):
+        placed = placed_on("EPSG:6933", box(-180, 80, 180, 90))
+        assert placed.is_placed.tolist() == [False]
+        assert placed.faults == {0: "the ground's projection has no place for it, or tears it; use --ground centred"}
+
+    def test_the_far_meridian_of_a_named_crs_tears_nothing(self):
         across = Polygon([(179, 0), (-179, 0), (-179, 1), (179, 1)])
-        assert placed_on("EPSG:6933", across).is_placed.tolist() == [False]
-        assert placed_on("EPSG:6933", box(10, 0, 11, 1)).is_placed.tolist() == [True]
+        batch = placed_on("EPSG:6933", across).batch
+        assert batch.sum_ring_values(batch.ring_signed_area)[0] == pytest.approx(zone(179, 0, 181, 1), rel=1e-6)
+
+    def test_latitudes_beyond_the_pole_are_not_placed(self):
+        ground = open_ground(plan_ground(WGS84, None, MeasureOptions()))
+        shapes = np.array([box(0, 80, 10, 91), box(0, 80, 10, 90)], dtype=object)
+        placed = ground.place(ring_batch(shapes), np.zeros(2, dtype=np.int64))
+        assert placed.is_placed.tolist() == [False, True]
+        assert placed.faults == {0: "coordinates lie outside what the layer's CRS can hold"}
 
     def test_nothing_in_nothing_out(self):
         ground = open_ground(plan_ground(WGS84, None, MeasureOptions()))

@@ -15,10 +15,10 @@ SPHERE = Ellipsoid(6371007.0, 0.0)
 
 
 def plane(ellipsoid, centre, longitude, latitude):
-    longitude, latitude = np.radians(np.atleast_1d(longitude)), np.radians(np.atleast_1d(latitude))
-    at = np.radians(np.array([centre[0]])), *ellipsoid.authalic(np.radians(np.array([centre[1]])))
-    centres = Centres.at(at, ellipsoid).take(np.zeros(len(longitude), dtype=np.int64))
-    return project(longitude, ellipsoid.authalic(latitude), centres, ellipsoid.authalic_radius_m)
+    points = np.atleast_1d(longitude).astype(float), np.atleast_1d(latitude).astype(float)
+    centres = Centres.at(np.radians(np.array([centre[1]])), ellipsoid)
+    feature = np.zeros(len(points[0]), dtype=np.int64)
+    return project(points, np.array([centre], dtype=float), feature, centres, ellipsoid)
 
 
 class TestPublishedExamples:
