@@ -162,19 +162,20 @@ def _longest_span(hull: RingBatch, facing: IntArray) -> tuple[FloatArray, FloatA
     first = hull.ring_start[:-1]
     begin, size = first[hull.vertex_ring], hull.ring_size[hull.vertex_ring]
     own = np.arange(hull.n_vertices)
-    spans, azimuths = [], []
+    pairs = []
     for end in (0, 1):
         here = begin + np.mod(own - begin + end, size)
         for step in (-1, 0, 1):
             there = begin + np.mod(facing - begin + step, size)
-            dx, dy = hull.x[there] - hull.x[here], hull.y[there] - hull.y[here]
-            spans.append(np.sqrt(dx * dx + dy * dy))
-            azimuths.append(axial(np.degrees(np.arctan2(dx, dy))))
-    span, azimuth = np.array(spans), np.array(azimuths)
+            pairs.append((hull.x[there] - hull.x[here], hull.y[there] - hull.y[here]))
+    dx, dy = np.array(pairs).transpose(1, 0, 2)
+    span = np.sqrt(dx * dx + dy * dy)
     longest = np.maximum.reduceat(span.max(axis=0), first)
-    is_longest = span >= np.repeat(longest * (1.0 - TIE_TOLERANCE), hull.ring_size)
-    azimuth[~is_longest] = np.inf
-    return longest, np.minimum.reduceat(azimuth.min(axis=0), first)
+    # Few pairs are the longest of their hull: only they need an angle.
+    chosen = np.nonzero(span >= np.repeat(longest * (1.0 - TIE_TOLERANCE), hull.ring_size))
+    azimuth = np.full(hull.n_rings, np.inf)
+    np.minimum.at(azimuth, hull.vertex_ring[chosen[1]], axial(np.degrees(np.arctan2(dx[chosen], dy[chosen]))))
+    return longest, azimuth
 
 
 def smallest_circle(hull: RingBatch) -> Circles:

@@ -98,13 +98,13 @@ def _next_in_group(item: IntArray, group: IntArray) -> IntArray:
 def _extremes(rings: RingBatch) -> IntArray:
     """Find a vertex farthest in each of eight directions for each ring, sorted in ring order."""
     first = rings.ring_start[:-1]
-    found = []
+    is_extreme = np.zeros(rings.n_vertices, dtype=np.bool_)
     for value in (rings.x, rings.y, rings.x + rings.y, rings.x - rings.y):
         for extreme in (np.maximum, np.minimum):
             at = np.flatnonzero(value == np.repeat(extreme.reduceat(value, first), rings.ring_size))
             owner = rings.vertex_ring[at]
-            found.append(at[np.flatnonzero(np.diff(owner, prepend=-1))])
-    return np.unique(np.concatenate(found))
+            is_extreme[at[np.flatnonzero(np.diff(owner, prepend=-1))]] = True
+    return np.flatnonzero(is_extreme)
 
 
 def _outside_of_extremes(rings: RingBatch) -> tuple[IntArray, BoolArray]:
@@ -114,7 +114,10 @@ def _outside_of_extremes(rings: RingBatch) -> tuple[IntArray, BoolArray]:
     following = _next_in_group(extremes, owner)
     chord_x, chord_y = rings.x[following] - rings.x[extremes], rings.y[following] - rings.y[extremes]
     # A run goes from one extreme to the next; what stands before a ring's first extreme belongs to its last.
-    run_start = np.union1d(extremes, rings.ring_start[:-1])
+    is_start = np.zeros(rings.n_vertices, dtype=np.bool_)
+    is_start[extremes] = True
+    is_start[rings.ring_start[:-1]] = True
+    run_start = np.flatnonzero(is_start)
     extreme_before = np.searchsorted(extremes, run_start, side="right") - 1
     last_of_ring = np.searchsorted(owner, np.arange(rings.n_rings), side="right") - 1
     run_ring = rings.vertex_ring[run_start]
