@@ -11,9 +11,10 @@ import shapely
 from numpy.typing import NDArray
 
 from geoshape.ground import edges, seams
-from geoshape.ground.equal_area import GroundKind, GroundPlan, angle_unit_deg, meridian_deg, unfolded
+from geoshape.ground.crs_parts import angle_unit_deg, globe_of, length_unit_m, meridian_deg, to_lonlat, unfolded
+from geoshape.ground.equal_area import GroundKind, GroundPlan
 from geoshape.ground.mapping import CentredMap, Globe, SharedMap
-from geoshape.ground.plane import Ellipsoid, distortion_deg
+from geoshape.ground.plane import distortion_deg
 from geoshape.rings import BoolArray, FloatArray, IntArray, RingBatch, oriented
 
 ObjectArray = NDArray[np.object_]
@@ -81,14 +82,11 @@ class Ground:
     @cached_property
     def _globe(self) -> Globe:
         crs = self._crs
-        if crs is None or crs.ellipsoid is None:
+        if crs is None:
             raise ValueError("a ground without a CRS has no globe")
-        major, minor = crs.ellipsoid.semi_major_metre, crs.ellipsoid.semi_minor_metre
-        ellipsoid = Ellipsoid(major, 1.0 - (minor / major) ** 2)
-        if self.plan.is_geographic or crs.geodetic_crs is None:
-            return Globe(ellipsoid)
-        inverse = pyproj.Transformer.from_crs(crs, crs.geodetic_crs, always_xy=True)
-        return Globe(ellipsoid, inverse, angle_unit_deg(crs))
+        ellipsoid = globe_of(crs)
+        # Longitude and latitude in another unit are turned into degrees before anything else.
+        return Globe(ellipsoid) if self.plan.is_geographic else Globe(ellipsoid, to_lonlat(crs), angle_unit_deg(crs))
 
     @cached_property
     def _meridian_deg(self) -> float:
@@ -100,7 +98,7 @@ class Ground:
 
     @cached_property
     def _target_unit_m(self) -> float:
-        return float(pyproj.CRS(self.plan.target_wkt).axis_info[0].unit_conversion_factor)
+        return length_unit_m(pyproj.CRS(self.plan.target_wkt))
 
     @cached_property
     def _own_projection(self) -> pyproj.Proj | None:
@@ -166,7 +164,7 @@ class Ground:
 
     def _on_centred(self, batch: RingBatch, frames: IntArray) -> Placed:
         to_plane = self._centred_map(batch, frames)
-        placed, lost = self._mapped(batch, frames, to_plane)
+        placed, lost = _mapped(self._cut(batch, frames, to_plane), to_plane)
         lost |= self._is_beyond_pole(batch, frames)
         distortion = distortion_deg(_reach(placed), self._globe.ellipsoid.authalic_radius_m)
         faults = dict.fromkeys(np.flatnonzero(lost).tolist(), NO_PLACE)
@@ -185,9 +183,12 @@ class Ground:
             frames,
             np.column_stack((east, north)),
         )
-        placed, lost = self._mapped(batch, frames, to_plane)
-        lost |= self._is_beyond_pole(batch, frames)
-        torn = self._is_torn(batch, frames, placed) | ~np.isfinite(east)
+        lost = self._is_beyond_pole(batch, frames)
+        own_plane = self._centred_map(batch, frames)
+        fine = self._cut(batch, frames, to_plane)
+        placed, is_nowhere = _mapped(fine, to_plane)
+        lost |= is_nowhere
+        torn = _is_torn(fine, own_plane, placed) | ~np.isfinite(east)
         faults = dict.fromkeys(np.flatnonzero(lost | torn).tolist(), NO_PLANE)
         distortion = self._deformation(batch, frames, self._target, _reach(placed))
         return Placed(placed, self._convergence(self._target, centre), distortion, ~(lost | torn), centre, faults)
@@ -202,28 +203,20 @@ class Ground:
             )
         return CentredMap(self._globe, batch.origin, middle, frames, keeps_pole)
 
-    def _mapped(self, batch: RingBatch, frames: IntArray, to_plane: edges.ToPlane) -> tuple[RingBatch, BoolArray]:
-        """Map features, and tell which of them have a vertex without a place."""
-        if self.plan.is_subdivided:
-            radius_m = self._globe.ellipsoid.semi_major_m
-            batch = edges.cut(batch, edges.pieces(batch, to_plane, radius_m, self._unit_m(frames)))
-        x, y = to_plane(batch.x, batch.y, batch.vertex_feature)
-        nowhere = ~(np.isfinite(x) & np.isfinite(y))
-        lost = np.zeros(batch.n_features, dtype=np.bool_)
-        if nowhere.any():
-            lost[batch.vertex_feature[nowhere]] = True
-            x[nowhere], y[nowhere] = 0.0, 0.0
-        return oriented(batch.moved(x, y, np.zeros_like(batch.origin))), lost
+    def _cut(self, batch: RingBatch, frames: IntArray, to_plane: edges.ToPlane) -> RingBatch:
+        if not self.plan.is_subdivided:
+            return batch
+        radius_m = self._globe.ellipsoid.semi_major_m
+        return edges.cut(batch, edges.pieces(batch, to_plane, radius_m, self._unit_m(frames)))
 
     def _unit_m(self, frames: IntArray) -> FloatArray:
         """Take metres in a unit of each feature's coordinates, roughly: a degree is one of latitude."""
         radius_m = self._globe.ellipsoid.semi_major_m
         if self.plan.is_geographic:
             return np.where(frames == seams.FRAME_LAYER, np.radians(radius_m), 1.0)
-        axes = self._crs.axis_info if self._crs is not None else []
-        is_angle = self._crs is not None and self._crs.is_geographic
-        unit = float(axes[0].unit_conversion_factor) if axes else 1.0
-        return np.full(len(frames), unit * radius_m if is_angle else unit)
+        crs = self._crs
+        unit = 1.0 if crs is None else length_unit_m(crs)
+        return np.full(len(frames), unit * radius_m if crs is not None and crs.is_geographic else unit)
 
     def _is_beyond_pole(self, batch: RingBatch, frames: IntArray) -> BoolArray:
         beyond = np.zeros(batch.n_features, dtype=np.bool_)
@@ -237,15 +230,6 @@ class Ground:
         is_outside = (highest > MAX_LATITUDE_DEG) & (frames[batch.ring_feature] == seams.FRAME_LAYER)
         beyond[batch.ring_feature[is_outside]] = True
         return beyond
-
-    def _is_torn(self, batch: RingBatch, frames: IntArray, placed: RingBatch) -> BoolArray:
-        """Tell which features have another area on the shared plane than on their own."""
-        to_own = self._centred_map(batch, frames)
-        own, _ = self._mapped(batch, frames, to_own)
-        area = own.sum_ring_values(own.ring_signed_area)
-        drawn = placed.sum_ring_values(placed.ring_signed_area)
-        with np.errstate(invalid="ignore"):
-            return np.asarray(np.abs(drawn - area) > TORN * np.abs(area))
 
     def _centres_deg(self, batch: RingBatch, frames: IntArray) -> FloatArray:
         middle = batch.origin + batch.planar_centroid
@@ -278,6 +262,25 @@ class Ground:
         deformation[~np.isfinite(deformation) | (np.abs(deformation) > 180.0)] = np.nan
         np.fmax.at(largest, owner, deformation)
         return largest
+
+
+def _mapped(batch: RingBatch, to_plane: edges.ToPlane) -> tuple[RingBatch, BoolArray]:
+    """Map features, and tell which of them have a vertex without a place."""
+    x, y = to_plane(batch.x, batch.y, batch.vertex_feature)
+    nowhere = ~(np.isfinite(x) & np.isfinite(y))
+    lost = np.zeros(batch.n_features, dtype=np.bool_)
+    if nowhere.any():
+        lost[batch.vertex_feature[nowhere]] = True
+        x[nowhere], y[nowhere] = 0.0, 0.0
+    return oriented(batch.moved(x, y, np.zeros_like(batch.origin))), lost
+
+
+def _is_torn(batch: RingBatch, to_own: CentredMap, placed: RingBatch) -> BoolArray:
+    """Tell which features have another area on the shared plane than on their own."""
+    own, _ = _mapped(batch, to_own)
+    area = own.sum_ring_values(own.ring_signed_area)
+    drawn = placed.sum_ring_values(placed.ring_signed_area)
+    return np.asarray(np.abs(drawn - area) > TORN * np.abs(area))
 
 
 def _reach(batch: RingBatch, *, at_pole: bool = False) -> FloatArray:
