@@ -1,7 +1,9 @@
 """Convex hulls of many features at once.
 
-The hull vertices of a simple ring stand in the ring's own order. So the points that may still lie outside a known chord
-of the hull are a contiguous run, and the farthest of each run is found for all runs of all features in one pass.
+Each ring's points farthest in eight directions are on its hull. The hull vertices of a simple ring stand in the ring's
+own order, so what may still lie on the hull between two of them is what stands between them and outside their chord.
+Sorted along the chord, it is thinned by dropping all points that do not stick out between their neighbours, until none
+is left: every one dropped lies within a segment of two others.
 """
 
 from __future__ import annotations
@@ -12,6 +14,9 @@ from geoshape.rings import BoolArray, FloatArray, IntArray, RingBatch
 
 HULL_TOLERANCE = 1e-14
 """Distance outside a chord, relative to the ring's extent, that is taken for rounding."""
+
+CHORD_END = 1e-9
+"""Share of a chord at its ends that no point but the end itself is sorted into."""
 
 
 def convex_hulls(batch: RingBatch) -> RingBatch:
@@ -40,23 +45,21 @@ def convex_hulls(batch: RingBatch) -> RingBatch:
 
 def _ring_hulls(rings: RingBatch) -> RingBatch:
     rings = _without_reflex(rings)
-    index, is_hull = _outside_of_extremes(rings)
+    index, is_extreme = _outside_of_extremes(rings)
     ring = rings.vertex_ring[index]
     x, y = rings.x[index], rings.y[index]
     tolerance = HULL_TOLERANCE * _ring_extent(rings)
-    while not is_hull.all():
-        start = np.flatnonzero(is_hull)
-        run = np.diff(np.append(start, len(index)))
-        end = _next_in_group(start, ring[start])
-        chord_x, chord_y = x[end] - x[start], y[end] - y[start]
-        outside = _distance_right(x, y, (x[start], y[start], chord_x, chord_y), run)
-        candidate = ~is_hull & (outside > tolerance[ring])
-        outside[~candidate] = -np.inf
-        farthest = np.repeat(np.maximum.reduceat(outside, start), run)
-        is_hull |= candidate & (outside == farthest)
-        keep = is_hull | candidate
-        index, ring, x, y, is_hull = index[keep], ring[keep], x[keep], y[keep], is_hull[keep]
-    return rings.take_vertices(index, np.bincount(ring, minlength=rings.n_rings))
+    while True:
+        # Points stand in the order of their chords, along each: what does not stick out between its neighbours goes.
+        after = _next_in_group(np.arange(len(index)), ring)
+        before = np.empty_like(after)
+        before[after] = np.arange(len(index))
+        ex, ey = x[after] - x, y[after] - y
+        turn = ex[before] * ey - ey[before] * ex
+        keep = is_extreme | (turn > tolerance[ring] * np.sqrt(ex * ex + ey * ey))
+        if keep.all():
+            return rings.take_vertices(index, np.bincount(ring, minlength=rings.n_rings))
+        index, ring, x, y, is_extreme = index[keep], ring[keep], x[keep], y[keep], is_extreme[keep]
 
 
 def _without_reflex(rings: RingBatch) -> RingBatch:
@@ -76,15 +79,19 @@ def _ring_extent(rings: RingBatch) -> FloatArray:
     return np.asarray(width + height)
 
 
-def _distance_right(
+def _by_chord(
     x: FloatArray, y: FloatArray, chord: tuple[FloatArray, FloatArray, FloatArray, FloatArray], run: IntArray
-) -> FloatArray:
-    """Measure how far points lie to the right of the chord of their run: outside, for a counter-clockwise hull."""
+) -> tuple[FloatArray, FloatArray]:
+    """Measure how far points lie to the right of the chord of their run (outside, for a counter-clockwise hull).
+
+    And the share of the chord that lies before them, within what keeps them between its ends.
+    """
     start_x, start_y, chord_x, chord_y = chord
-    length = np.hypot(chord_x, chord_y)
-    safe_length = np.where(length > 0, length, 1.0)
-    unit_x, unit_y = np.repeat(chord_x / safe_length, run), np.repeat(chord_y / safe_length, run)
-    return np.asarray((x - np.repeat(start_x, run)) * unit_y - (y - np.repeat(start_y, run)) * unit_x)
+    square = chord_x * chord_x + chord_y * chord_y
+    per_square = np.divide(1.0, square, out=np.zeros_like(square), where=square > 0)
+    unit_x, unit_y = np.repeat(chord_x * per_square, run), np.repeat(chord_y * per_square, run)
+    dx, dy = x - np.repeat(start_x, run), y - np.repeat(start_y, run)
+    return dx * unit_y - dy * unit_x, np.clip(dx * unit_x + dy * unit_y, CHORD_END, 1.0 - CHORD_END)
 
 
 def _next_in_group(item: IntArray, group: IntArray) -> IntArray:
@@ -108,7 +115,7 @@ def _extremes(rings: RingBatch) -> IntArray:
 
 
 def _outside_of_extremes(rings: RingBatch) -> tuple[IntArray, BoolArray]:
-    """Keep the extremes and what lies outside their chords, each ring turned to begin at an extreme."""
+    """Keep the extremes and what lies outside their chords, in the order of the chords and along each."""
     extremes = _extremes(rings)
     owner = rings.vertex_ring[extremes]
     following = _next_in_group(extremes, owner)
@@ -130,19 +137,17 @@ def _outside_of_extremes(rings: RingBatch) -> tuple[IntArray, BoolArray]:
         chord_x[extreme_before],
         chord_y[extreme_before],
     )
-    keep = _distance_right(rings.x, rings.y, chord, run) > 0
+    outside, along = _by_chord(rings.x, rings.y, chord, run)
+    keep = outside > 0
     keep[extremes] = True
-    wrapped = np.repeat(is_wrapped, run)[keep]
+    along[extremes] = 0.0
     index = np.flatnonzero(keep)
-    order = np.argsort(index + rings.ring_start[rings.vertex_ring[index]] + _turn(rings, index, wrapped), kind="stable")
+    # Neighbouring extremes are half a right angle apart, so what lies outside their chord lies beside it.
+    order = np.argsort(np.repeat(extreme_before, run)[index] + along[index])
     index = index[order]
     is_extreme = np.zeros(rings.n_vertices, dtype=np.bool_)
     is_extreme[extremes] = True
     return index, is_extreme[index]
-
-
-def _turn(rings: RingBatch, index: IntArray, wrapped: BoolArray) -> IntArray:
-    return np.where(wrapped, rings.ring_size[rings.vertex_ring[index]], 0)
 
 
 def _merged(hulls: RingBatch, rings_per_feature: IntArray) -> RingBatch:
