@@ -207,7 +207,7 @@ def _levels(rows: Rows, name: str, option: str) -> tuple[list[ClassValue], IntAr
     """Distinct values of a column in order, null last, and the place of each row's value among them."""
     column = whole(rows, name)
     if pa.types.is_floating(column.type):
-        column = pc.if_else(pc.is_nan(column), None, column)
+        column = pc.if_else(pc.is_finite(column), column, pa.scalar(None, column.type))
     if pa.types.is_null(column.type):
         return [None], np.zeros(len(column), dtype=np.int64)
     try:
