@@ -12,7 +12,6 @@ from functools import lru_cache
 from math import factorial
 
 import numpy as np
-import scipy.fft
 
 from geoshape.formulas.arclength import ComplexArray
 from geoshape.rings import FloatArray, IntArray
@@ -82,7 +81,7 @@ def on_grid(products: ComplexArray) -> ComplexArray:
     padded = np.zeros((len(products), size), dtype=np.complex128)
     padded[:, : highest + 1] = products[:, highest:]
     padded[:, -highest:] = products[:, :highest]
-    return np.asarray(scipy.fft.fft(padded, axis=1, overwrite_x=True))
+    return np.fft.fft(padded, axis=1)
 
 
 def gain_of(c: ComplexArray, *, keep_direction: bool) -> FloatArray:

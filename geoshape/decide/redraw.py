@@ -5,7 +5,6 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import numpy as np
-import scipy.fft
 import shapely
 from numpy.typing import NDArray
 
@@ -108,7 +107,7 @@ def rebuild(coefficients: ComplexArray, points: int) -> ComplexArray:
     padded[:, : highest + 1] = coefficients[:, highest:]
     if highest:
         padded[:, -highest:] = coefficients[:, :highest]
-    return np.asarray(scipy.fft.ifft(padded, axis=1, norm="forward", overwrite_x=True))
+    return np.fft.ifft(padded, axis=1, norm="forward")
 
 
 @dataclass(frozen=True, eq=False)
