@@ -1,1 +1,5 @@
 """The report: one page that opens offline, and its figures."""
+
+from geoshape.report.data import ReportData as ReportData
+from geoshape.report.data import ReportOptions as ReportOptions
+from geoshape.report.page import build_report as build_report

@@ -282,10 +282,20 @@ class View:
         return ranked[0] if ranked and _label_rank(ranked[0]) < len(_LABEL_NAMES) else None
 
     def label(self, row: int) -> str:
-        """Name a shape for people: what its label column holds, else its row."""
+        """Name a shape for people: what its label column holds, else its row.
+
+        Examples
+        --------
+        >>> data = ReportData(pa.table({"id": ["7", None]}), pa.array([None, None], pa.binary()), None, {}, ())
+        >>> View(data, ReportOptions()).label(0), View(data, ReportOptions()).label(1)
+        ('id 7', 'row 2')
+        """
         name = self.label_field
         text = None if name is None else _as_text(self.data.table.column(name)[row].as_py())
-        return text or f"row {row + 1}"
+        if not text:
+            return f"row {row + 1}"
+        # A bare number says too little in a sentence.
+        return f"{name} {text}" if text.isdecimal() else text
 
 
 _FAMILY_ORDER = {ERROR: 1, DECISION: 2, ATTRIBUTE: 3}

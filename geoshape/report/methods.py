@@ -25,6 +25,9 @@ from geoshape.report.wording import (
 )
 
 NOTABLE_DISTORTION_DEG = 1.0
+SMALLEST_TOLD_DEG = 0.001
+"""Deformation below which the figure would only distract."""
+
 ROUGH_VERTICES = 12
 """Vertices below which an outline says little about its spectrum."""
 
@@ -120,7 +123,7 @@ def _distortion_text(view: View) -> str:
         return "not known"
     row = int(np.nanargmax(distortion))
     above = int(np.count_nonzero(distortion > NOTABLE_DISTORTION_DEG))
-    text = f"{number_text(float(distortion[row]), 3)}\u00b0, in {view.label(row)}"
+    text = f"{_degrees_text(float(distortion[row]))}, in {view.label(row)}"
     return f"{text}; above 1\u00b0 in {count_text(above, 'shape')}" if above else text
 
 
@@ -175,10 +178,10 @@ def paragraph(view: View) -> str:
     layer = f" of the layer {lineage['layer']}" if lineage.get("layer") else ""
     source = f" ({lineage['input']}, {crs_text(view)})" if lineage.get("input") else ""
     day = date_text(lineage.get("started"))
+    what = f"The shapes of {count_text(view.data.n_rows, 'polygon')}{layer}{source} were measured with {tool}"
     text = [
-        f"The shapes of {count_text(view.data.n_rows, 'polygon')}{layer}{source} were measured with {tool}"
-        f"{f' ({others})' if others else ''}{f' on {day}' if day else ''}.",
-        f"Ground: {str(lineage['ground']).rstrip('.')}." if lineage.get("ground") else "",
+        f"{what}{f' ({others})' if others else ''}{f' on {day}' if day else ''}.",
+        _ground_sentence(lineage.get("ground")),
         _deformation_sentence(view),
         "Areas exclude holes; perimeters include them; azimuths run clockwise from true north.",
     ]
@@ -194,11 +197,25 @@ def paragraph(view: View) -> str:
     return " ".join(sentence for sentence in text if sentence)
 
 
+def _ground_sentence(ground: object) -> str:
+    if not ground:
+        return ""
+    kind, _, how = str(ground).rstrip(".").partition(": ")
+    return f"Ground: {kind} ({how})." if how else f"Ground: {kind}."
+
+
 def _deformation_sentence(view: View) -> str:
     distortion = view.bare("ground_distortion")
     if distortion is None or np.isnan(distortion).all():
         return ""
-    return f"Angular deformation on it is at most {number_text(float(np.nanmax(distortion)), 2)}\u00b0."
+    largest = float(np.nanmax(distortion))
+    return f"Angular deformation on it is {'' if largest < SMALLEST_TOLD_DEG else 'at most '}{_degrees_text(largest)}."
+
+
+def _degrees_text(angle_deg: float) -> str:
+    if angle_deg < SMALLEST_TOLD_DEG:
+        return f"under {number_text(SMALLEST_TOLD_DEG)}\u00b0"
+    return f"{number_text(angle_deg, 3)}\u00b0"
 
 
 def _status_sentence(view: View) -> str:
@@ -239,18 +256,25 @@ def _counts(view: View) -> Iterable[str]:
     """Warn where many enough shapes are of a kind that a column serves badly."""
     n = view.data.n_rows
     rules = (
-        ("part_count", "above", 1.0, "with several parts: spectra describe the largest part, all else every part"),
-        ("vertex_count", "below", float(ROUGH_VERTICES), "of fewer than 12 vertices: their spectra are of corners"),
-        ("axis_strength", "below", ROUND_STRENGTH, "nearly as wide as long: their azimuths mean little"),
-        ("ground_distortion", "above", NOTABLE_DISTORTION_DEG, "so wide that the ground bends them by over 1\u00b0"),
+        ("part_count", 1.0, np.inf, "several parts: spectra describe the largest part, all else every part"),
+        ("vertex_count", -np.inf, float(ROUGH_VERTICES), "fewer than 12 vertices: spectra are of corners there"),
+        ("axis_strength", -np.inf, ROUND_STRENGTH, "hardly a longer axis: azimuths mean little there"),
+        (
+            "ground_distortion",
+            NOTABLE_DISTORTION_DEG,
+            np.inf,
+            "such an extent that the ground bends it by over 1\u00b0",
+        ),
     )
-    for name, side, limit, text in rules:
+    area = view.bare("area_m2")
+    for name, above, below, text in rules:
         values = view.bare(name)
         if values is None:
             continue
-        count = int(np.count_nonzero(values > limit if side == "above" else values < limit))
+        picked = (values > above) & (values < below)
+        count = int(np.count_nonzero(picked if area is None else picked & ~np.isnan(area)))
         if count:
-            yield f"{count_text(count, 'shape')} ({share_text(count, n)}) {text}."
+            yield f"{count_text(count, 'shape')} ({share_text(count, n)}) {'has' if count == 1 else 'have'} {text}."
 
 
 def _errors(view: View) -> str:

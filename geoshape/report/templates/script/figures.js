@@ -1,0 +1,262 @@
+// The linked figures: outlines and values go into one source, so what is selected in one is selected in all.
+
+const axes = { histogram: { x: null, y: null }, scatter: { x: null, y: null } };
+let models = null;
+let isFollowing = false;
+
+function mapOutlines() {
+  const ringsOf = unpackRings(page.map.outline);
+  const xs = [], ys = [];
+  for (let shape = 0; shape < page.count; shape++) {
+    const shapeX = [], shapeY = [];
+    for (const ring of ringsOf(shape)) {
+      if (!ring.isHole) { shapeX.push([]); shapeY.push([]); }
+      shapeX[shapeX.length - 1].push(ring.x);
+      shapeY[shapeY.length - 1].push(ring.y);
+    }
+    xs.push(shapeX);
+    ys.push(shapeY);
+  }
+  return { xs, ys };
+}
+
+// Place of a value between 0 and 1 among the column's quantiles.
+function rankOf(steps, value) {
+  let low = 0, high = steps.length - 1;
+  while (high - low > 1) {
+    const middle = (low + high) >> 1;
+    if (steps[middle] <= value) low = middle; else high = middle;
+  }
+  const width = steps[high] - steps[low];
+  return (low + (width > 0 ? Math.min(Math.max((value - steps[low]) / width, 0), 1) : 0.5)) / (steps.length - 1);
+}
+
+function placeOn(field, spread) {
+  const steps = quantilesOf(field);
+  if (spread === "rank") return (value) => rankOf(steps, value);
+  const along = field.log ? Math.log10 : (value) => value;
+  const low = along(steps[0]), width = along(steps[steps.length - 1]) - low;
+  return (value) => (width > 0 ? (along(value) - low) / width : 0.5);
+}
+
+function classColour(field, text) {
+  if (text === null) return null;
+  return page.colours.classes[field.classes.indexOf(text)] ?? page.colours.other;
+}
+
+function classTexts(field) {
+  if (!isNumeric(field)) return field.texts;
+  return Array.from(valuesOf(field), (value) => (Number.isNaN(value) ? null : String(value)));
+}
+
+function coloursOf(field, spread) {
+  if (field.classes) return classTexts(field).map((text) => classColour(field, text));
+  const place = placeOn(field, spread), ramp = page.colours.ramp;
+  return Array.from(valuesOf(field), (value) =>
+    Number.isNaN(value) ? null : ramp[Math.round(Math.min(Math.max(place(value), 0), 1) * (ramp.length - 1))]);
+}
+
+function colourMap() {
+  const field = fields.get(byId("map-column").value);
+  const spread = byId("map-spread").value;
+  byId("map-spread").disabled = Boolean(field.classes);
+  drawLegend(field, spread);
+  if (!models) return;
+  const colours = coloursOf(field, spread);
+  models.shapes.data = {
+    ...models.shapes.data,
+    fill: colours.map((colour) => colour ?? page.colours.null),
+    hatch: colours.map((colour) => (colour === null ? "right_diagonal_line" : "blank")),
+    value: colours.map((_, shape) => `${field.title} ${textAt(field, shape)}`),
+  };
+}
+
+function drawLegend(field, spread) {
+  const legend = byId("map-legend");
+  legend.replaceChildren(make("p", { class: "legend-title" }, titleWithUnit(field)));
+  const hasNull = field.classes ? classTexts(field).includes(null) : valuesOf(field).some(Number.isNaN);
+  if (field.classes) {
+    const keys = field.classes.map((text) =>
+      make("li", {}, make("span", { class: "swatch", style: `background:${classColour(field, text)}` }), text));
+    if (hasNull) keys.push(nullKey());
+    legend.append(make("ul", { class: "keys" }, ...keys));
+    return;
+  }
+  const stops = page.colours.ramp.filter((_, i) => i % 15 === 0).join(",");
+  const ticks = make("div", { class: "ticks" });
+  const steps = quantilesOf(field), last = steps.length - 1;
+  for (const share of [0, 0.25, 0.5, 0.75, 1]) {
+    let value = steps[Math.round(share * last)];
+    if (spread === "value") {
+      value = field.log
+        ? 10 ** (Math.log10(steps[0]) + share * (Math.log10(steps[last]) - Math.log10(steps[0])))
+        : steps[0] + share * (steps[last] - steps[0]);
+    }
+    ticks.append(make("span", { style: `left:${100 * share}%` }, numberText(value, 3)));
+  }
+  const how = spread === "rank" ? "equal steps of rank" : field.log ? "logarithmic" : "equal steps of value";
+  legend.append(
+    make("div", { class: "ramp-frame" }, make("div", { class: "ramp", style: `background:linear-gradient(90deg,${stops})` }), ticks),
+    make("ul", { class: "keys" }, make("li", { class: "quiet" }, how), ...(hasNull ? [nullKey()] : [])),
+  );
+}
+
+const nullKey = () => make("li", {}, make("span", { class: "swatch hatched" }), "no value");
+
+// Keep a metre as long upwards as sideways, whatever the window.
+function fitMap(keepsView) {
+  const { map } = models;
+  const width = map.inner_width, height = map.inner_height;
+  if (!(width > 0 && height > 0)) return;
+  let [west, east, south, north] = extent;
+  if (keepsView) [west, east, south, north] = [map.x_range.start, map.x_range.end, map.y_range.start, map.y_range.end];
+  const middleX = (west + east) / 2, middleY = (south + north) / 2;
+  const margin = keepsView ? 1 : 1.06;
+  const each = keepsView ? (east - west) / width : Math.max(((east - west) * margin) / width, ((north - south) * margin) / height);
+  const x = [middleX - (each * width) / 2, middleX + (each * width) / 2];
+  const y = [middleY - (each * height) / 2, middleY + (each * height) / 2];
+  map.x_range.setv({ start: x[0], end: x[1] });
+  map.y_range.setv({ start: y[0], end: y[1] });
+  if (!keepsView) {
+    map.x_range.setv({ reset_start: x[0], reset_end: x[1] });
+    map.y_range.setv({ reset_start: y[0], reset_end: y[1] });
+  }
+}
+
+let extent = [0, 1, 0, 1];
+
+function extentOf(xs, ys) {
+  const flat = (nested) => nested.flat(2);
+  let [west, east, south, north] = [Infinity, -Infinity, Infinity, -Infinity];
+  for (const x of flat(xs)) for (const v of x) { if (v < west) west = v; if (v > east) east = v; }
+  for (const y of flat(ys)) for (const v of y) { if (v < south) south = v; if (v > north) north = v; }
+  return west < east || south < north ? [west, east, south, north] : [0, 1, 0, 1];
+}
+
+function setAxis(plot, side, title, low, high, isLog) {
+  axes[plot][side] = { isLog };
+  const model = models[plot];
+  const axis = (side === "x" ? model.below : model.left)[0];
+  const span = high - low || 1;
+  const range = side === "x" ? model.x_range : model.y_range;
+  range.setv({ start: low, end: high, reset_start: low, reset_end: high, bounds: null });
+  axis.axis_label.text = title;
+  axis.axis_label = axis.axis_label;
+  axis.change.emit();
+  return span;
+}
+
+function drawHistogram() {
+  const field = fields.get(byId("histogram-column").value);
+  const { start, step, counts } = field.bins;
+  const left = counts.map((_, i) => start + i * step);
+  models.bars.data = { left, right: left.map((x) => x + step), top: counts };
+  const width = step * counts.length;
+  setAxis("histogram", "x", titleWithUnit(field), start - 0.02 * width, start + 1.02 * width, field.log);
+  setAxis("histogram", "y", "shapes", 0, 1.06 * Math.max(...counts), false);
+  countChosen();
+}
+
+function binOf(field, value) {
+  if (Number.isNaN(value)) return -1;
+  const { start, step, counts } = field.bins;
+  return Math.min(Math.max(Math.floor(((field.log ? Math.log10(value) : value) - start) / step), 0), counts.length - 1);
+}
+
+function countChosen() {
+  const field = fields.get(byId("histogram-column").value);
+  const values = valuesOf(field), counts = field.bins.counts.map(() => 0);
+  for (const shape of chosen.shapes) { const bin = binOf(field, values[shape]); if (bin >= 0) counts[bin]++; }
+  const { left, right } = models.bars.data;
+  models.chosenBars.data = { left, right, top: counts };
+}
+
+function drawScatter() {
+  const places = ["x", "y"].map((side) => {
+    const field = fields.get(byId(`scatter-${side}`).value);
+    const values = Array.from(valuesOf(field), (value) => (field.log ? Math.log10(value) : value));
+    const known = values.filter((value) => !Number.isNaN(value));
+    const low = known.reduce((a, b) => Math.min(a, b), Infinity), high = known.reduce((a, b) => Math.max(a, b), -Infinity);
+    const pad = 0.05 * (high - low || 1);
+    if (known.length) setAxis("scatter", side, titleWithUnit(field), low - pad, high + pad, field.log);
+    return values;
+  });
+  models.shapes.data = { ...models.shapes.data, px: places[0], py: places[1] };
+}
+
+// Round steps, or powers of ten with twos and fives where they would be few.
+function ticks(plot, side, range) {
+  const axis = axes[plot][side];
+  const [low, high] = [range.start, range.end];
+  if (!axis || !(high > low)) return [];
+  if (axis.isLog && high - low > 0.6) {
+    const factors = high - low > 2.5 ? [1] : [1, 2, 5];
+    const found = [];
+    for (let power = Math.floor(low); power <= Math.ceil(high); power++)
+      for (const factor of factors) found.push(power + Math.log10(factor));
+    const inside = found.filter((tick) => tick >= low && tick <= high);
+    const each = Math.ceil(inside.length / 6);
+    return inside.filter((_, i) => i % each === 0);
+  }
+  const raw = (high - low) / (side === "x" ? 5 : 4);
+  const power = 10 ** Math.floor(Math.log10(raw));
+  const step = power * [1, 2, 5, 10].find((factor) => power * factor >= raw);
+  const found = [];
+  for (let i = Math.ceil(low / step); i * step <= high; i++) found.push(Number((i * step).toPrecision(12)));
+  return found;
+}
+
+function tickText(plot, side, tick) {
+  return numberText(axes[plot][side]?.isLog ? 10 ** tick : tick, 3);
+}
+
+function onReady(given) {
+  models = given;
+  const outlines = mapOutlines();
+  extent = extentOf(outlines.xs, outlines.ys);
+  const empty = page.labels.map(() => NaN);
+  models.shapes.data = { ...outlines, fill: page.labels.map(() => page.colours.null), hatch: page.labels.map(() => "blank"), px: empty, py: empty, label: page.labels, value: page.labels };
+  colourMap();
+  fitMap(false);
+  for (const side of ["inner_width", "inner_height"]) {
+    let wasFitted = models.map.inner_width > 0;
+    models.map.properties[side].change.connect(() => { fitMap(wasFitted); wasFitted = true; });
+  }
+  if (byId("histogram-column").value) drawHistogram();
+  if (byId("scatter-x").value && byId("scatter-y").value) drawScatter();
+  document.documentElement.dataset.figures = "ready";
+}
+
+function onFigures(indices) {
+  if (!isFollowing) choose([...indices]);
+}
+
+function onBars(indices) {
+  if (!indices.length || isFollowing) return;
+  const field = fields.get(byId("histogram-column").value), values = valuesOf(field), bins = new Set(indices);
+  choose([...values.keys()].filter((shape) => bins.has(binOf(field, values[shape]))));
+}
+
+onChoice(({ shapes }) => {
+  if (!models) return;
+  isFollowing = true;
+  models.shapes.selected.indices = shapes;
+  models.bars.selected.indices = [];
+  isFollowing = false;
+  if (byId("histogram-column").value) countChosen();
+});
+
+const isColour = (field) => isNumeric(field) || field.classes;
+fillSelect(byId("map-column"), isColour, page.mapColumn);
+fillSelect(byId("histogram-column"), isNumeric, page.mapColumn);
+fillSelect(byId("scatter-x"), isNumeric, page.pair[0]);
+fillSelect(byId("scatter-y"), isNumeric, page.pair[1] ?? page.pair[0]);
+
+byId("map-column").addEventListener("change", () => {
+  colourMap();
+  const field = fields.get(byId("map-column").value);
+  if (isNumeric(field)) { byId("histogram-column").value = field.name; drawHistogram(); }
+});
+byId("map-spread").addEventListener("change", colourMap);
+byId("histogram-column").addEventListener("change", drawHistogram);
+for (const side of ["x", "y"]) byId(`scatter-${side}`).addEventListener("change", drawScatter);
