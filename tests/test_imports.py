@@ -30,7 +30,7 @@ ALLOWED = {
     "decide": {"formulas", "rings", "geometry", *LEAVES},
     "task": {"measuring", "ground", "geometry", *LEAVES},
     "run": {"task", "measuring", "ground", "geometry", "rings", "layers", "pool", "decide", *LEAVES},
-    "report": {"run", "decide", "measuring", "layers", "geometry", "rings", *LEAVES},
+    "report": {"decide", "measuring", "ground", "geometry", "formulas", "rings", *LEAVES},
     "cli": {"run", "decide", "report", "measuring", "inspection", "layers", "pool", *LEAVES},
     # The package re-exports its public names.
     "geoshape": {"frames", "run", "decide", "report", "inspection", *LEAVES},
