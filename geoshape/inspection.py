@@ -20,7 +20,7 @@ from geoshape.ground.layer_crs import resolve_crs
 from geoshape.ground.place import Ground, open_ground
 from geoshape.layers.layer import LayerInfo, LayerSummary
 from geoshape.layers.read import list_layers, open_layer, read_batches
-from geoshape.options import GROUND_CENTRED, GROUND_PLANE, MeasureOptions, Source
+from geoshape.options import GROUND_CENTRED, GROUND_PLANE, Edges, MeasureOptions, Source
 from geoshape.rings import FloatArray, IntArray
 
 _LOG_LOW, _LOG_HIGH, _BINS_PER_DECADE = -6.0, 9.0, 200
@@ -159,7 +159,7 @@ def inspect_file(source: Source, *, assume_crs: str | None = None) -> Inspection
     options = MeasureOptions(assume_crs=assume_crs)
     crs = resolve_crs(pyproj.CRS(info.crs_wkt) if info.crs_wkt else None, options)
     ground = GROUND_PLANE if crs is None else GROUND_CENTRED
-    inspector = Inspector(open_ground(plan_ground(crs, None, MeasureOptions(ground=ground))))
+    inspector = Inspector(open_ground(plan_ground(crs, None, MeasureOptions(ground=ground, edges=Edges.PLANE))))
     for batch in read_batches(info):
         inspector.add(*read_wkb(batch.geometry.to_pylist()))
     return Inspection(str(source.path), layers, info, _verdict(crs, info), inspector.findings())

@@ -4,6 +4,9 @@ from __future__ import annotations
 
 import json
 import shlex
+import shutil
+import sys
+import textwrap
 from dataclasses import asdict
 from pathlib import Path
 from typing import TYPE_CHECKING
@@ -16,6 +19,8 @@ from geoshape.options import Source
 if TYPE_CHECKING:
     from geoshape.inspection import CrsVerdict, Findings, Inspection
     from geoshape.layers.layer import LayerInfo
+
+LABEL_WIDTH = 11
 
 TRUE_AREA = 1e-4
 """How far areas may be from true ones and still be called so in a line of words."""
@@ -38,7 +43,17 @@ def command(source: Source, assume_crs: str | None, *, as_json: bool) -> None:
         click.echo(json.dumps(_record(seen), indent=2, default=str))
         return
     for label, text in _lines(seen, source):
-        click.echo(f"{click.style(f'{label:<11}', bold=True)} {text}" if label else f"{'':<11} {text}")
+        for i, line in enumerate(_wrapped(label, text)):
+            head = label if i == 0 else ""
+            click.echo(f"{click.style(f'{head:<{LABEL_WIDTH}}', bold=bool(head))} {line}")
+
+
+def _wrapped(label: str, text: str) -> list[str]:
+    """Break a line for the terminal; never the line that is there to be copied, nor what goes into a pipe."""
+    if label == "next" or not sys.stdout.isatty():
+        return [text]
+    width = shutil.get_terminal_size().columns - LABEL_WIDTH - 1
+    return textwrap.wrap(text, max(width, 20)) or [""]
 
 
 def _record(seen: Inspection) -> dict[str, object]:
