@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import os
 import sys
 from importlib import import_module
 from typing import NoReturn
@@ -14,6 +15,7 @@ from geoshape.errors import GeoshapeError, OptionError
 _COMMANDS = {
     "inspect": "look at a layer: can it be measured, and what is wrong with it",
     "measure": "measure every polygon and write the layer with its new columns",
+    "flag": "flag features by rules, or because their shape is unlike the rest",
     "columns": "list the columns: name, unit, meaning, source",
 }
 
@@ -51,6 +53,8 @@ def cli() -> None:
 
 def main() -> None:
     """Run the command line and exit: 0 done, 1 failed, 2 wrong use."""
+    # Processes share out the work; threads of the linear algebra beneath NumPy would only stand in their way.
+    os.environ.setdefault("OPENBLAS_NUM_THREADS", "1")
     try:
         code = cli(prog_name="geoshape", standalone_mode=False)
     except (click.Abort, KeyboardInterrupt):

@@ -7,7 +7,7 @@ from dataclasses import dataclass
 import numpy as np
 from sklearn.cluster import KMeans
 from sklearn.metrics import silhouette_score
-from threadpoolctl import threadpool_limits  # type: ignore[import-untyped]
+from threadpoolctl import threadpool_limits
 
 from geoshape.errors import OptionError
 from geoshape.rings import FloatArray, IntArray

@@ -35,6 +35,10 @@ DRIFT = 3.0
 MIN_STEP = 1e-5
 """Least step of the differences, as a share of the globe's radius: 64 m, where rounding is no matter yet."""
 
+FLAT = 1e-5
+"""Area over squared perimeter of a strip a hundred thousand times as long as wide: thinner ones are cut as if they had
+as much, or a strip of next to no area would be cut without end. Their two sides err alike, and together by nothing."""
+
 MAX_ROUNDS = 6
 MAX_GROWTH = 64
 MAX_PIECES = 20_000
@@ -120,6 +124,7 @@ def _is_fine(batch: RingBatch, to_plane: ToPlane, radius_m: float, min_step: Flo
     drift = DRIFT * size * (curvature**2 + radius_m**-2)
     between = np.abs(_between(at, sums)) + drift * longest * (scale_x**2 * squares_x + scale_y**2 * squares_y) / 12.0
     area = np.abs(batch.sum_ring_values(batch.ring_signed_area) * _cross(at.x, at.y))
+    area = np.maximum(area, FLAT * (4.0 * size) ** 2)
     return np.asarray(
         (between <= TOLERANCE * area)
         & ((curvature * longest) ** 2 <= 24.0 * TOLERANCE)
@@ -237,7 +242,7 @@ class _Errors:
     excess : (n_vertices,) float64
         Length of each edge beyond its chords.
     area, perimeter : (n_features,) float64
-        On the plane.
+        On the plane; the area at least what `FLAT` says.
     """
 
     between: FloatArray
@@ -264,9 +269,10 @@ def _errors(batch: RingBatch, count: IntArray, to_plane: ToPlane) -> _Errors:
     excess = np.where(length > 0, 8.0 / 3.0 * sagitta**2 / length, np.hypot(bow_x, bow_y))
     n = batch.n_vertices
     mapped = fine.moved(x, y, fine.origin)
+    perimeter = fine.sum_features(length)
     return _Errors(
         between=np.asarray(np.bincount(edge, between, n), np.float64),
         excess=np.asarray(np.bincount(edge, excess, n), np.float64),
-        area=np.abs(mapped.sum_ring_values(mapped.ring_signed_area)),
-        perimeter=fine.sum_features(length),
+        area=np.maximum(np.abs(mapped.sum_ring_values(mapped.ring_signed_area)), FLAT * perimeter**2),
+        perimeter=perimeter,
     )
