@@ -17,6 +17,7 @@ from geoshape.report.wording import (
     NULL,
     count_text,
     date_text,
+    formula_text,
     length_text,
     number_text,
     share_text,
@@ -163,7 +164,7 @@ def _formulas_of(columns: Iterable[Column], prefix: str) -> Iterable[Formula]:
         if bare[:4] in {"fd_p", "fd_n"} and bare[4:].isdigit():
             amplitudes.append(column)
         else:
-            yield Formula(column.name, column.meaning, column.source)
+            yield Formula(column.name, formula_text(column.meaning), column.source)
     if amplitudes:
         meaning = "amplitude |Zk| / |Z+1| of harmonic k of the outline's spectrum; p for k > 0, n for k < 0"
         yield Formula(f"{amplitudes[0].name} \u2026 {amplitudes[-1].name}", meaning, amplitudes[0].source)
@@ -306,14 +307,16 @@ def _entry(view: View, field: Column) -> Entry:
         values = view.numbers(field.name)
         nulls = int(np.count_nonzero(np.isnan(values)))
         if nulls < len(values):
-            span = " \u00b7 ".join(number_text(float(value), 4) for value in np.nanquantile(values, (0.0, 0.5, 1.0)))
+            ends = np.nanquantile(values, (0.0, 0.5, 1.0)).tolist()
+            is_own = field.family == ATTRIBUTE and field.kind is Kind.COUNT
+            span = " \u00b7 ".join(f"{value:g}" if is_own else number_text(value, 4) for value in ends)
     return Entry(
         name=field.name,
         short_name=field.short_name if field.family != ATTRIBUTE else "",
         kind=str(field.kind),
         unit=unit_text(field.unit),
         bounds=_bounds_text(field),
-        meaning="" if field.family == ATTRIBUTE else field.meaning,
+        meaning="" if field.family == ATTRIBUTE else formula_text(field.meaning),
         nulls=whole_text(nulls) if nulls else "0",
         span=span or NULL,
     )

@@ -15,7 +15,7 @@ from geoshape.report import methods, plates, sentences
 from geoshape.report.data import ReportData, ReportOptions, View
 from geoshape.report.linked import linked_figures
 from geoshape.report.payload import page_data
-from geoshape.report.placing import CloseUps, place_close_ups, place_on_map
+from geoshape.report.placing import CloseUps, MapPlane, place_close_ups, place_on_map
 from geoshape.report.sampling import Sample, choose_rows, is_flagged
 from geoshape.report.sheet import Sheet, Tile, small_paths
 from geoshape.report.wording import NULL, count_text, date_text, number_text, plain_name, unit_text, whole_text
@@ -23,6 +23,12 @@ from geoshape.rings import IntArray
 
 MAX_PAGE_BYTES = 15_000_000
 """A page must open in a moment; a larger one is made again with fewer shapes."""
+
+FINDING_HALF = 360
+"""Half the side of the large outlines, in the units of their drawing."""
+
+WIDE_RATIO = 1.5
+"""Width over height from which the map takes the whole width of the page."""
 
 PRINTED_ROWS = 150
 FLAG_ROWS = 60
@@ -96,6 +102,7 @@ def _page(view: View) -> str:
         "statuses": sentences.status_counts(view),
         "sample": sample,
         "plane": plane,
+        "is_wide": _is_wide(plane),
         "linked": linked_figures(plane),
         "layers": LAYERS,
         "sheet": sheet.of_columns(),
@@ -132,6 +139,8 @@ def _environment() -> jinja2.Environment:
         lstrip_blocks=True,
     )
     environment.filters["whole"] = whole_text
+    # Columns and families keep their order.
+    environment.policies["json.dumps_kwargs"] = {"sort_keys": False, "separators": (",", ":")}
     return environment
 
 
@@ -144,6 +153,14 @@ def _title(view: View) -> str:
         return view.options.title
     name = view.data.lineage.get("layer") or view.data.lineage.get("input")
     return f"The shapes of {name}" if name else "The shapes of a layer"
+
+
+def _is_wide(plane: MapPlane) -> bool:
+    batch = plane.outline
+    if not batch.n_rings:
+        return False
+    origin = batch.origin[batch.vertex_feature]
+    return bool(np.ptp(batch.x + origin[:, 0]) > WIDE_RATIO * np.ptp(batch.y + origin[:, 1]))
 
 
 def _contents(content: dict[str, Any]) -> list[tuple[str, str]]:
@@ -167,7 +184,7 @@ def _contents(content: dict[str, Any]) -> list[tuple[str, str]]:
 
 def _tile(finding: sentences.Finding, rows: IntArray, shapes: CloseUps) -> Tile:
     index = int(np.searchsorted(rows, finding.row))
-    path = small_paths(shapes.outline, np.array([index]))[0]
+    path = small_paths(shapes.outline, np.array([index]), FINDING_HALF)[0]
     return Tile(index, finding.label, "", path, 1.0, "")
 
 

@@ -14,13 +14,15 @@ from geoshape.report.methods import family_title
 from geoshape.report.placing import CloseUps, MapPlane
 from geoshape.report.plates import map_column
 from geoshape.report.sampling import Sample, ends_and_middle
+from geoshape.report.sentences import status_counts
 from geoshape.report.sheet import ENDS
 from geoshape.report.statistics import histogram, is_logarithmic, quantiles
-from geoshape.report.wording import plain_name, unit_text
-from geoshape.rings import IntArray
+from geoshape.report.wording import formula_text, plain_name, unit_text
+from geoshape.rings import FloatArray, IntArray
 
 MAP_VERTICES = 150_000
 CLOSE_VERTICES = 150_000
+HULL_VERTICES = 60_000
 
 POINTS_AT_ALL = 300_000
 """Points at equal arc length that a page carries; with many shapes every second, fourth ... of them."""
@@ -94,7 +96,7 @@ def _field(view: View, field: Column, rows: IntArray) -> dict[str, Any]:
         "title": plain_name(field, view.prefix),
         "unit": unit_text(field.unit),
         "kind": str(field.kind),
-        "meaning": field.meaning,
+        "meaning": formula_text(field.meaning),
         "source": field.source,
         "family": field.family,
         "classes": view.levels(field.name) if field.name in view.classes else None,
@@ -108,6 +110,7 @@ def _field(view: View, field: Column, rows: IntArray) -> dict[str, Any]:
     counted = histogram(values, is_log=is_logarithmic(values, field))
     described |= {
         "log": counted.is_log,
+        "decimals": None if counted.is_log else _decimals(values),
         "values": packed(values[rows], "<f8"),
         "quantiles": packed(quantiles(values), "<f8"),
         "bins": {"start": counted.start, "step": counted.step, "counts": counted.counts.tolist()},
@@ -115,6 +118,14 @@ def _field(view: View, field: Column, rows: IntArray) -> dict[str, Any]:
     if field.family not in {ERROR, ATTRIBUTE}:
         described["ends"] = [_on_page(found, rows) for found in ends_and_middle(values, ENDS)]
     return described
+
+
+def _decimals(values: FloatArray) -> int | None:
+    """Choose decimals that suit a whole column; None where it spans too much, or nothing."""
+    largest = float(np.nanmax(np.abs(values))) if not np.isnan(values).all() else 0.0
+    if not largest > 1e-3:
+        return None
+    return max(3 - int(np.floor(np.log10(largest))), 0)
 
 
 def _on_page(chosen: IntArray, rows: IntArray) -> list[int]:
@@ -141,7 +152,9 @@ def _pair(view: View) -> list[str]:
 def _shown(view: View) -> list[str]:
     attributes = [field.name for field in view.fields if field.family == ATTRIBUTE and field.name != view.label_field]
     measured = [name for name in (view.named(bare) for bare in SHOWN_AT_FIRST) if name]
-    return [*attributes[:3], *measured]
+    if all(entry.is_measured for entry in status_counts(view)):
+        measured = [name for name in measured if name != view.named("shape_status")]
+    return [*attributes[:2], *measured]
 
 
 def _map(plane: MapPlane) -> dict[str, Any]:
@@ -166,7 +179,7 @@ def _close(shapes: CloseUps) -> dict[str, Any]:
         step *= 2
     return {
         "outline": packed_rings(simplified(shapes.outline, np.inf, CLOSE_VERTICES)),
-        "hull": packed_rings(shapes.hull),
+        "hull": packed_rings(simplified(shapes.hull, np.inf, HULL_VERTICES)),
         "rectangle": packed_rings(shapes.rectangle),
         "circle": packed(shapes.circle, "<f4"),
         "ellipse": packed(shapes.ellipse, "<f4"),

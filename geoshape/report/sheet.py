@@ -11,13 +11,13 @@ from geoshape.report.data import View
 from geoshape.report.encoding import extents
 from geoshape.report.placing import CloseUps
 from geoshape.report.sampling import ends_and_middle
-from geoshape.report.wording import count_text, length_text, plain_name, unit_text, value_text
+from geoshape.report.wording import count_text, formula_text, length_text, plain_name, unit_text, value_text
 from geoshape.rings import IntArray, RingBatch
 
 HALF = 90
 """Half the side of the square that a small outline fills, in the units of its drawing."""
 
-COARSE = 1.5
+COARSE = 1.0
 """Tolerance of simplification in the same units: a small outline is some 100 pixels wide."""
 
 ENDS = 3
@@ -115,7 +115,7 @@ class Sheet:
         captions = {row: value_text(float(values[row]), field, 3) for row, _ in chosen}
         title = plain_name(field, self.view.prefix)
         unit = unit_text(field.unit)
-        note = f"{field.name}{f', {unit}' if unit else ''}: {field.meaning}"
+        note = f"{field.name}{f', {unit}' if unit else ''}: {formula_text(field.meaning)}"
         return self._row(title[:1].upper() + title[1:], note, chosen, captions)
 
     def of_groups(self) -> tuple[SheetRow, ...]:
@@ -168,7 +168,7 @@ class Sheet:
         return SheetRow(title, note, length_text(largest * 100.0 / HALF), tiles)
 
 
-def small_paths(outline: RingBatch, chosen: IntArray) -> list[str]:
+def small_paths(outline: RingBatch, chosen: IntArray, half: int = HALF) -> list[str]:
     """Draw some features as SVG paths of whole numbers, each filling the square of a small outline.
 
     Parameters
@@ -177,6 +177,8 @@ def small_paths(outline: RingBatch, chosen: IntArray) -> list[str]:
         North up, y upwards.
     chosen : (m,) int64
         Features.
+    half : int
+        Half the side of that square in the units of the drawing: the larger, the finer.
 
     Returns
     -------
@@ -194,11 +196,11 @@ def small_paths(outline: RingBatch, chosen: IntArray) -> list[str]:
     paths = []
     for feature in chosen.tolist():
         rings = np.flatnonzero(outline.ring_feature == feature)
-        paths.append("".join(_ring_paths(outline, rings, float(size[feature]))))
+        paths.append("".join(_ring_paths(outline, rings, 2.0 * half / float(size[feature] or 1.0))))
     return paths
 
 
-def _ring_paths(outline: RingBatch, rings: IntArray, size: float) -> list[str]:
+def _ring_paths(outline: RingBatch, rings: IntArray, factor: float) -> list[str]:
     pieces = []
     spans = [slice(outline.ring_start[ring], outline.ring_start[ring + 1]) for ring in rings]
     if not spans:
@@ -206,7 +208,6 @@ def _ring_paths(outline: RingBatch, rings: IntArray, size: float) -> list[str]:
     x = np.concatenate([outline.x[span] for span in spans])
     y = np.concatenate([outline.y[span] for span in spans])
     middle_x, middle_y = 0.5 * (x.min() + x.max()), 0.5 * (y.min() + y.max())
-    factor = 2.0 * HALF / size
     for span in spans:
         corners = np.column_stack(((outline.x[span] - middle_x) * factor, (middle_y - outline.y[span]) * factor))
         pieces.append(path_of(corners, COARSE))

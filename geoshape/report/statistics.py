@@ -12,7 +12,7 @@ from geoshape.rings import FloatArray, IntArray
 QUANTILES = 101
 """Quantiles that a page carries of each column: 0 %, 1 % ... 100 %."""
 
-MIN_BINS, MAX_BINS = 6, 36
+MIN_BINS, MAX_BINS = 10, 36
 
 WIDE_RATIO = 50.0
 """Ratio of the 97.5 % to the 2.5 % quantile from which a positive column is shown on a logarithmic scale."""
@@ -74,12 +74,12 @@ class Histogram:
 
 
 def histogram(values: FloatArray, *, is_log: bool) -> Histogram:
-    """Count values in bins whose width follows Freedman and Diaconis (1981), between 6 and 36 bins.
+    """Count values in bins whose width follows Freedman and Diaconis (1981), between 10 and 36 bins.
 
     Examples
     --------
     >>> histogram(np.array([1.0, 1.0, 2.0, np.nan]), is_log=False).counts.tolist()
-    [2, 0, 0, 0, 0, 1]
+    [2, 0, 0, 0, 0, 0, 0, 0, 0, 1]
     """
     known = values[~np.isnan(values)]
     known = np.log10(known) if is_log else known
@@ -159,23 +159,31 @@ def rose_counts(azimuth_deg: FloatArray) -> IntArray:
     return np.bincount(np.minimum(sector, ROSE_BINS - 1), minlength=ROSE_BINS)
 
 
-def nice_ticks(low: float, high: float, most: int = 6) -> list[float]:
+def nice_ticks(low: float, high: float, about: int = 5) -> list[float]:
     """Choose round values between two ends, ends included where they are round.
+
+    Parameters
+    ----------
+    low, high : float
+    about : int
+        How many are wanted; the round step that comes closest to it is taken.
 
     Examples
     --------
-    >>> nice_ticks(0.0, 1.0), nice_ticks(3.0, 3.0)
-    ([0.0, 0.2, 0.4, 0.6, 0.8, 1.0], [3.0])
+    >>> nice_ticks(0.0, 1.0), nice_ticks(0.15, 0.97), nice_ticks(3.0, 3.0)
+    ([0.0, 0.2, 0.4, 0.6, 0.8, 1.0], [0.2, 0.4, 0.6, 0.8], [3.0])
     """
     if not high > low:
         return [low]
-    raw = (high - low) / max(most - 1, 1)
-    power = 10.0 ** np.floor(np.log10(raw))
-    step = float(next(power * factor for factor in (1.0, 2.0, 5.0, 10.0) if power * factor >= raw * (1.0 - 1e-9)))
+    power = 10.0 ** np.floor(np.log10(high - low))
+    steps = [float(f"{power * factor:.12g}") for factor in (0.1, 0.2, 0.5, 1.0, 2.0, 5.0)]
+    step = min(steps, key=lambda step: (abs(_count_inside(low, high, step) - about), -step))
     first = int(np.ceil(low / step - 1e-9))
-    last = int(np.floor(high / step + 1e-9))
-    digits = max(0, -int(np.floor(np.log10(step))))
-    return [round(step * i, digits) for i in range(first, last + 1)]
+    return [float(f"{step * (first + i):.12g}") for i in range(_count_inside(low, high, step))]
+
+
+def _count_inside(low: float, high: float, step: float) -> int:
+    return int(np.floor(high / step + 1e-9)) - int(np.ceil(low / step - 1e-9)) + 1
 
 
 def log_ticks(low: float, high: float) -> list[float]:
@@ -192,4 +200,4 @@ def log_ticks(low: float, high: float) -> list[float]:
         return inside[:: max(1, len(inside) // 5)]
     steps = [factor * 10.0**power for power in range(first, last + 1) for factor in (1.0, 2.0, 5.0)]
     found = [float(f"{value:.6g}") for value in steps if low <= value <= high]
-    return found if len(found) >= 2 else nice_ticks(low, high, 4)
+    return found if len(found) >= 2 else nice_ticks(low, high, 3)

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+import re
 from datetime import datetime
 
 from geoshape.columns import Column, Kind
@@ -31,6 +32,35 @@ def unit_text(unit: str) -> str:
     ('m\u00b2', '', 'm')
     """
     return _UNITS.get(unit, unit)
+
+
+def formula_text(text: str) -> str:
+    """Write a formula in the registry's ASCII with its signs.
+
+    Examples
+    --------
+    >>> formula_text("4 pi A / P^2"), formula_text("sqrt(mu20 + n02)")
+    ('4\u00a0\u03c0\u00a0A\u00a0/\u00a0P\u00b2', '\u221a(\u03bc\u2082\u2080 + \u03b7\u2080\u2082)')
+    """
+    for pattern, sign in _SIGNS:
+        text = re.sub(pattern, sign, text)
+    return re.sub(r"([\u03bc\u03b7\u03bb])(\d+)", lambda found: found[1] + found[2].translate(_SUBSCRIPTS), text)
+
+
+_SIGNS = (
+    (r"\b4 pi A / P\^2", "4\u00a0\u03c0\u00a0A\u00a0/\u00a0P\u00b2"),
+    (r"\bpi\b", "\u03c0"),
+    (r"\^2", "\u00b2"),
+    (r"\^3", "\u00b3"),
+    (r"\bsqrt\(", "\u221a("),
+    (r"\bsum\b", "\u2211"),
+    (r"\bmu(?=\d)", "\u03bc"),
+    (r"\bn(?=\d\d\b)", "\u03b7"),
+    (r"\bl(?=[12]\b)", "\u03bb"),
+    (r"\+-k", "\u00b1k"),
+    (r" - ", " \u2212 "),
+)
+_SUBSCRIPTS = str.maketrans("0123456789", "".join(chr(0x2080 + digit) for digit in range(10)))
 
 
 def plain_name(column: Column, prefix: str = "") -> str:

@@ -132,14 +132,14 @@ function drawRebuilt() {
 
 // Amplitudes on a logarithmic axis: the higher harmonics of any outline are small.
 function drawSpectrum(shape) {
-  const svg = byId("spectrum"), left = 52, right = 632, top = 10, bottom = 176, floor = -4;
+  const svg = byId("spectrum"), left = 84, right = 636, top = 12, bottom = 204, floor = -4;
   svg.replaceChildren(draw("title", {}, `Spectrum of ${page.labels[shape]}`));
   const size = amplitude(shape, 1);
   if (!(size > 0)) return;
   const y = (share) => top + ((bottom - top) * Math.min(Math.log10(share), 0)) / floor;
   for (let power = 0; power >= floor; power -= 1) {
     const level = y(10 ** power);
-    svg.append(draw("line", { class: "grid", x1: left, x2: right, y1: level, y2: level }), draw("text", { x: left - 6, y: level + 4, "text-anchor": "end" }, `${numberText(100 * 10 ** power)} %`));
+    svg.append(draw("line", { class: "grid", x1: left, x2: right, y1: level, y2: level }), draw("text", { x: left - 8, y: level + 6, "text-anchor": "end" }, `${numberText(100 * 10 ** power)} %`));
   }
   const slot = (right - left) / HARMONICS, bar = Math.min(slot * 0.36, 14);
   for (let k = 1; k <= HARMONICS; k++) {
@@ -151,9 +151,9 @@ function drawSpectrum(shape) {
       mark.append(draw("title", {}, `k = ${sign * k}: ${numberText(100 * share, 3)} %`));
       svg.append(mark);
     }
-    svg.append(draw("text", { x: at(middle), y: bottom + 16, "text-anchor": "middle" }, String(k)));
+    svg.append(draw("text", { x: at(middle), y: bottom + 22, "text-anchor": "middle" }, String(k)));
   }
-  svg.append(draw("text", { x: (left + right) / 2, y: bottom + 34, "text-anchor": "middle" }, "harmonic k"));
+  svg.append(draw("text", { x: (left + right) / 2, y: bottom + 48, "text-anchor": "middle" }, "harmonic k"));
 }
 
 function numberRow(field, shape) {

@@ -137,13 +137,11 @@ function setAxis(plot, side, title, low, high, isLog) {
   axes[plot][side] = { isLog };
   const model = models[plot];
   const axis = (side === "x" ? model.below : model.left)[0];
-  const span = high - low || 1;
   const range = side === "x" ? model.x_range : model.y_range;
   range.setv({ start: low, end: high, reset_start: low, reset_end: high, bounds: null });
   axis.axis_label.text = title;
   axis.axis_label = axis.axis_label;
   axis.change.emit();
-  return span;
 }
 
 function drawHistogram() {
@@ -198,9 +196,11 @@ function ticks(plot, side, range) {
     const each = Math.ceil(inside.length / 6);
     return inside.filter((_, i) => i % each === 0);
   }
-  const raw = (high - low) / (side === "x" ? 5 : 4);
-  const power = 10 ** Math.floor(Math.log10(raw));
-  const step = power * [1, 2, 5, 10].find((factor) => power * factor >= raw);
+  const power = 10 ** Math.floor(Math.log10(high - low));
+  const about = side === "x" ? 5 : 4;
+  const inside = (step) => Math.floor(high / step) - Math.ceil(low / step) + 1;
+  const step = [5, 2, 1, 0.5, 0.2, 0.1].map((factor) => factor * power)
+    .reduce((best, next) => (Math.abs(inside(next) - about) < Math.abs(inside(best) - about) ? next : best));
   const found = [];
   for (let i = Math.ceil(low / step); i * step <= high; i++) found.push(Number((i * step).toPrecision(12)));
   return found;

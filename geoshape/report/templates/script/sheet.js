@@ -31,7 +31,7 @@ function drawAnyRow() {
 }
 
 if (byId("sheet-column")) {
-  fillSelect(byId("sheet-column"), (field) => Boolean(field.ends), page.fields.find((field) => field.ends)?.name);
+  fillSelect(byId("sheet-column"), (field) => Boolean(field.ends), page.fields.find((field) => field.ends && field.family !== "record")?.name);
   byId("sheet-column").addEventListener("change", drawAnyRow);
   if (byId("sheet-column").value) drawAnyRow();
 }

@@ -60,7 +60,7 @@ function bodyRow(shape) {
   const isChosen = chosen.shapes.includes(shape);
   const pick = make("button", { type: "button", class: "pick", "aria-pressed": String(isChosen) }, page.labels[shape]);
   const cells = table.columns.map((field) => {
-    const text = isNumeric(field) ? bareText(field, valuesOf(field)[shape]) : (field.texts[shape] ?? "\u2013");
+    const text = isNumeric(field) ? cellText(field, valuesOf(field)[shape]) : (field.texts[shape] ?? "\u2013");
     return make("td", { class: isNumeric(field) ? "number" : null }, text);
   });
   const row = make("tr", { class: isChosen ? "chosen" : null, "data-row": shape }, make("th", { scope: "row" }, pick), ...cells);

@@ -82,6 +82,13 @@ function bareText(field, value, digits = 4) {
   return (field.family === "attribute" ? text : grouped(text)).replaceAll("-", "\u2212");
 }
 
+// In a column, the decimals that suit all its values.
+function cellText(field, value) {
+  if (field.kind !== "number" || field.decimals === null || !Number.isFinite(value)) return bareText(field, value);
+  const [whole, rest] = value.toFixed(field.decimals).split(".");
+  return (grouped(whole) + (rest ? `.${rest}` : "")).replaceAll("-", "\u2212");
+}
+
 function withUnit(field, text) {
   if (!field.unit || text === "\u2013") return text;
   return field.unit === "\u00b0" ? text + field.unit : `${text}\u00a0${field.unit}`;
