@@ -102,15 +102,11 @@ def areal_scale(crs: pyproj.CRS, area: tuple[FloatArray, FloatArray]) -> tuple[f
     """
     if not len(area[0]):
         return None
-    globe = globe_of(crs)
     projection = unfolded(crs)
     longitude, latitude = (np.radians(values) for values in area)
     along_x, along_y = _derivative(projection, longitude, latitude, (1.0, 0.0))
     up_x, up_y = _derivative(projection, longitude, latitude, (0.0, 1.0))
-    e2 = globe.eccentricity_squared
-    flatter = 1.0 - e2 * np.sin(latitude) ** 2
-    true = globe.semi_major_m**2 * (1.0 - e2) * np.cos(latitude) / flatter**2
-    scale = np.abs(along_x * up_y - along_y * up_x) * length_unit_m(crs) ** 2 / true
+    scale = np.abs(along_x * up_y - along_y * up_x) * length_unit_m(crs) ** 2 / globe_of(crs).area_element(latitude)
     scale = scale[np.isfinite(scale)]
     return (float(scale.min()), float(scale.max())) if len(scale) else None
 

@@ -73,17 +73,22 @@ def _projection(extent: Bounds) -> str:
     is_round_the_world = east - west > WORLD_WIDTH_DEG
     is_beyond = south >= POLAR_EDGE_DEG or north <= -POLAR_EDGE_DEG
     if abs(latitude) >= POLAR_LATITUDE_DEG or (is_round_the_world and is_beyond):
-        return f"+proj=laea +lat_0={math.copysign(90.0, latitude):.0f} +lon_0={longitude:.6f}"
+        return f"+proj=laea +lat_0={_degrees(math.copysign(90.0, latitude))} +lon_0={_degrees(longitude)}"
     if is_round_the_world:
         farthest = max(abs(south), abs(north))
-        return f"+proj=cea +lat_ts={min(30.0, farthest / 2.0):.6f} +lon_0={longitude:.6f}"
+        return f"+proj=cea +lat_ts={_degrees(min(30.0, farthest / 2.0))} +lon_0={_degrees(longitude)}"
     width = (east - west) * math.cos(math.radians(latitude))
     height = max(north - south, 1e-9)
     if width / height <= ROUND_ASPECT:
-        return f"+proj=laea +lat_0={latitude:.6f} +lon_0={longitude:.6f}"
+        return f"+proj=laea +lat_0={_degrees(latitude)} +lon_0={_degrees(longitude)}"
     if abs(latitude) < EQUATORIAL_LATITUDE_DEG:
-        return f"+proj=cea +lat_ts={abs(latitude):.6f} +lon_0={longitude:.6f}"
-    sixth = height / 6.0
+        return f"+proj=cea +lat_ts={_degrees(abs(latitude))} +lon_0={_degrees(longitude)}"
+    parallels = _degrees(south + height / 6.0), _degrees(north - height / 6.0)
     return (
-        f"+proj=aea +lat_1={south + sixth:.6f} +lat_2={north - sixth:.6f} +lat_0={latitude:.6f} +lon_0={longitude:.6f}"
+        f"+proj=aea +lat_1={parallels[0]} +lat_2={parallels[1]} "
+        f"+lat_0={_degrees(latitude)} +lon_0={_degrees(longitude)}"
     )
+
+
+def _degrees(value: float) -> str:
+    return f"{round(value, 6):.9g}"

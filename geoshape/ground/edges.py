@@ -90,11 +90,13 @@ def cut(batch: RingBatch, count: IntArray) -> RingBatch:
     if (count == 1).all():
         return batch
     edge, share = _piece_starts(count)
-    x = batch.x[edge] + share * (batch.next_x - batch.x)[edge]
-    y = batch.y[edge] + share * (batch.next_y - batch.y)[edge]
-    size = np.add.reduceat(count, batch.ring_start[:-1])
-    whole = batch.take_vertices(edge, size)
-    return whole.moved(x, y, batch.origin)
+    fine = batch.take_vertices(edge, np.add.reduceat(count, batch.ring_start[:-1]))
+    new = np.flatnonzero(share)
+    old, along = edge[new], share[new]
+    # The gathered coordinates are the new batch's own.
+    fine.x[new] += along * (batch.next_x[old] - batch.x[old])
+    fine.y[new] += along * (batch.next_y[old] - batch.y[old])
+    return fine
 
 
 def _piece_starts(count: IntArray) -> tuple[IntArray, FloatArray]:

@@ -6,6 +6,7 @@ import math
 from dataclasses import dataclass, replace
 from enum import StrEnum
 
+import numpy as np
 import pyproj
 from pyproj.exceptions import CRSError
 
@@ -113,13 +114,14 @@ def plan_ground(crs: pyproj.CRS | None, bounds: Bounds | None, options: MeasureO
         label = f"layer: {_described(target)}, {name} ellipsoid"
         return replace(plan, kind=GroundKind.SHARED, target_wkt=target.srs, label=label)
     target = _understood(options.ground)
-    _check_equal_area(target, lonlat_grid(own if _is_known(bounds) else target, bounds))
+    area = lonlat_grid(own if _is_known(bounds) else target, bounds)
+    _check_equal_area(target, area)
     return replace(
         plan,
         kind=GroundKind.SHARED,
         target_wkt=target.to_wkt(),
         label=f"{target.name}: {_described(target)}",
-        warnings=_datum_warnings(own, target),
+        warnings=_datum_warnings(own, target, np.radians(area[1])),
     )
 
 
@@ -215,15 +217,14 @@ def _described(crs: pyproj.CRS) -> str:
     return f"{operation.method_name} ({places})" if places else operation.method_name
 
 
-def _datum_warnings(own: pyproj.CRS, target: pyproj.CRS) -> tuple[str, ...]:
+def _datum_warnings(own: pyproj.CRS, target: pyproj.CRS, latitude_rad: FloatArray) -> tuple[str, ...]:
     mine, theirs = own.ellipsoid, target.ellipsoid
-    if mine is None or theirs is None:
-        return (f"{own.name} or {target.name} names no ellipsoid; longitudes and latitudes are taken over as they are",)
-    ratio = (globe_of(target).authalic_radius_m / globe_of(own).authalic_radius_m) ** 2
-    if abs(ratio - 1.0) <= AREAL_TOLERANCE:
+    ratio = globe_of(target).area_element(latitude_rad) / globe_of(own).area_element(latitude_rad) - 1.0
+    worst = float(ratio[np.argmax(np.abs(ratio))])
+    if mine is None or theirs is None or abs(worst) <= AREAL_TOLERANCE:
         return ()
     text = (
         f"the layer is on the {mine.name} ellipsoid, {target.name} on {theirs.name}: longitudes and latitudes are "
-        f"taken over as they are, and areas are {100.0 * (ratio - 1.0):+.2g} % off"
+        f"taken over as they are, and areas are up to {100.0 * worst:+.2g} % off"
     )
     return (text,)

@@ -122,7 +122,7 @@ class CentredMap:
     @cached_property
     def _centres(self) -> Centres:
         with np.errstate(invalid="ignore"):
-            return Centres.at(np.radians(self.centre_deg[:, 1]), self.globe.ellipsoid)
+            return Centres.at(self.centre_deg[:, 1], self.globe.ellipsoid)
 
     def __call__(self, x: FloatArray, y: FloatArray, feature: IntArray) -> tuple[FloatArray, FloatArray]:
         """Map points given relative to the origins of their features."""

@@ -237,6 +237,8 @@ class Ground:
 
     def _convergence(self, projection: pyproj.Proj, centre_deg: FloatArray) -> FloatArray:
         """Give the azimuth of grid north; 0 where the projection does not tell."""
+        if not len(centre_deg):
+            return np.zeros(0)
         factors = projection.get_factors(centre_deg[:, 0] + self._meridian_deg, centre_deg[:, 1], errcheck=False)
         convergence = np.asarray(factors.meridian_convergence, dtype=np.float64)
         return np.where(np.isfinite(convergence) & (np.abs(convergence) <= 360.0), convergence, 0.0)

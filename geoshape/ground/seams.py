@@ -144,7 +144,7 @@ def _snapped(ring: Ring, seam: float | None) -> Ring:
 
 def _unwrap_ring(ring: Ring) -> Ring:
     step = np.diff(ring[:, 0])
-    shortest = step - _WHOLE * np.round(step / _WHOLE)
+    turns = -np.round(step / _WHOLE)
     is_turn = (np.abs(step) == _WHOLE) & (ring[:-1, 1] == ring[1:, 1])
     if is_turn.any():
         # Where the neighbours run along the cut, the edge is one side of a box round the world.
@@ -154,8 +154,9 @@ def _unwrap_ring(ring: Ring) -> Ring:
         is_box = is_turn & np.roll(at_cut, 1) & np.roll(at_cut, -1) & ~closes
         if _touches_both_poles(ring):
             is_box |= is_turn & (ring[:-1, 1] < 0.0)
-        shortest[is_box] = step[is_box]
-    longitude = np.concatenate((ring[:1, 0], ring[0, 0] + np.cumsum(shortest)))
+        turns[is_box] = 0.0
+    # Whole turns added to what was read: a vertex on the cut stays on it to the last digit.
+    longitude = ring[:, 0] + _WHOLE * np.concatenate(([0.0], np.cumsum(turns)))
     return np.column_stack((longitude, ring[:, 1]))
 
 

@@ -15,36 +15,10 @@ from geoshape.formulas.arclength import edge_lengths
 from geoshape.geometry import ring_batch
 from geoshape.ground.equal_area import plan_ground
 from geoshape.ground.place import open_ground
-from geoshape.ground.seams import rejoin
 from geoshape.options import MeasureOptions
+from tests.ground.layings import WGS84, area_and_perimeter, placed_on, zone
 
 GEOD = pyproj.Geod(ellps="WGS84")
-WGS84 = pyproj.CRS(4326)
-
-
-def placed_on(ground_name, geometry, crs=WGS84, **options):
-    geometries = np.array([geometry], dtype=object)
-    bounds = tuple(shapely.bounds(geometry).tolist())
-    ground = open_ground(plan_ground(pyproj.CRS(crs), bounds, MeasureOptions(ground=ground_name, **options)))
-    geometries, frames, is_cut = ground.unwrap(ground.in_degrees(geometries))
-    return ground.place(ring_batch(rejoin(geometries, is_cut)), frames)
-
-
-def area_and_perimeter(geometry, crs=WGS84, **options):
-    batch = placed_on("centred", geometry, crs, **options).batch
-    return batch.sum_ring_values(batch.ring_signed_area)[0], edge_lengths(batch).sum()
-
-
-def zone(west, south, east, north):
-    """Area of a WGS 84 quadrilateral between parallels, in closed form."""
-    e2 = 0.0066943799901413165
-    e = np.sqrt(e2)
-
-    def q(latitude):
-        s = np.sin(np.radians(latitude))
-        return s / (1 - e2 * s * s) + np.arctanh(e * s) / e
-
-    return 6378137.0**2 * (1 - e2) / 2 * np.radians(east - west) * (q(north) - q(south))
 
 
 class TestSeams:
