@@ -1,118 +1,78 @@
-"""Print the figures that geoshape means to reach, each as a ratio or a time measured in this run.
-
-``python -m tests.benchmarks [--work FOLDER] [--quick] [--skip-large] [--plain-rows N]``
-"""
+"""Measure every figure that is to be reached: ``python -m tests.benchmarks --work FOLDER``."""
 
 from __future__ import annotations
 
-import argparse
-import shutil
-import statistics
+import importlib.metadata
+import json
+import os
+import platform
 import tempfile
-from collections.abc import Callable
-from dataclasses import dataclass
+from dataclasses import asdict, replace
 from pathlib import Path
 
-from tests.benchmarks import workload
-from tests.benchmarks.watch import Seen, run
+import click
 
-GIGABYTE = 1e9
-SMALL_RUNS = 5
-LARGE_RUNS = 3
+from tests.benchmarks.figures import Figure, Plan, Sizes, measure_figures
+from tests.benchmarks.workload import GEOGRAPHIC, need_space
 
-
-@dataclass(frozen=True)
-class Figure:
-    """A figure with its targets."""
-
-    name: str
-    value: float
-    unit: str
-    first: float
-    then: float | None = None
-    at_least: bool = False
-
-    def line(self) -> str:
-        """Say what was measured and whether the targets are met."""
-        sign = ">=" if self.at_least else "<="
-        targets = f"{sign} {self.first:g}" + (f", then {self.then:g}" if self.then is not None else "")
-        return f"{self.name:<66} {self.value:8.2f} {self.unit:<3} {targets:<16} {self._verdict()}"
-
-    def _verdict(self) -> str:
-        def met(target: float) -> bool:
-            return self.value >= target if self.at_least else self.value <= target
-
-        if self.then is not None and met(self.then):
-            return "met, both"
-        return "met" if met(self.first) else "missed"
+QUICK = Sizes(middle=20_000, large=100_000, coast=200_000, share=2_000)
+PACKAGES = ("geoshape", "numpy", "shapely", "pyogrio", "pyarrow", "geopandas", "opencv-python-headless")
 
 
-def median(action: Callable[[], Seen], times: int) -> float:
-    """Take the median time of several runs."""
-    return statistics.median(action().seconds for _ in range(times))
+@click.command()
+@click.option(
+    "--work",
+    type=click.Path(path_type=Path, file_okay=False),
+    help="Folder for layers; they stay there for the next run. Left out: a folder that is removed.",
+)
+@click.option("--quick", is_flag=True, help="Small layers, to see that all of it runs; targets do not count then.")
+@click.option("--skip-2m", is_flag=True, help="Leave the largest layer out.")
+@click.option("--full", is_flag=True, help="Let the plain script measure all polygons instead of a share of them.")
+@click.option("--crs", default=GEOGRAPHIC, show_default=True, help="CRS of the layers.")
+@click.option("--json", "as_json", is_flag=True, help="Print the figures as JSON.")
+def main(work: Path | None, quick: bool, skip_2m: bool, full: bool, crs: str, as_json: bool) -> None:
+    """Make the workloads, measure every figure in one run, and print it beside its target."""
+    sizes = QUICK if quick else Sizes()
+    sizes = replace(sizes, large=None if skip_2m else sizes.large, share=sizes.middle if full else sizes.share)
+    with tempfile.TemporaryDirectory() as scratch:
+        folder = work or Path(scratch)
+        folder.mkdir(parents=True, exist_ok=True)
+        plan = Plan(folder, sizes, 2 if quick else 3, crs)
+        need_space(folder, [plan.workload(count) for count in (sizes.middle, sizes.large) if count])
+        figures = list(measure_figures(plan, lambda line: click.echo(line, err=True)))
+    if as_json:
+        click.echo(
+            json.dumps({"machine": machine(), "figures": [asdict(figure) | {"met": figure.met} for figure in figures]})
+        )
+        return
+    click.echo("\n".join(f"{name:12} {value}" for name, value in machine().items()))
+    if quick:
+        click.echo("small layers: the targets are those of the full ones and do not count")
+    click.echo(table(figures))
 
 
-def measure(source: Path, target: Path, *options: str) -> Seen:
-    """Run ``geoshape measure`` in processes of its own."""
-    return run("-m", "geoshape", "measure", str(source), str(target), "--overwrite", "-q", *options)
+def machine() -> dict[str, str]:
+    """Describe what the figures were measured on."""
+    versions = [f"{name} {importlib.metadata.version(name)}" for name in PACKAGES]
+    return {
+        "cores": str(os.process_cpu_count() if hasattr(os, "process_cpu_count") else os.cpu_count()),
+        "system": platform.platform(),
+        "python": platform.python_version(),
+        "packages": ", ".join(versions),
+    }
 
 
-def figures(work: Path, arguments: argparse.Namespace) -> list[Figure]:
-    """Measure everything."""
-    rows = 20_000 if arguments.quick else 200_000
-    more = 5 * rows if arguments.quick else 10 * rows
-    plain_rows = min(arguments.plain_rows, rows)
-    source, target = workload.layer(work, rows), work / "measured.gpkg"
-    found = []
-    runs = [measure(source, target) for _ in range(LARGE_RUNS)]
-    seconds = statistics.median(seen.seconds for seen in runs)
-    copy = median(lambda: run("-m", "tests.benchmarks.bare_copy", str(target), str(work / "copy.gpkg")), LARGE_RUNS)
-    print(f"{rows:,} polygons: measure {seconds:.1f} s, bare copy of the output {copy:.1f} s")
-    found.append(Figure(f"measure, {rows:,} polygons, against a bare copy", seconds / copy, "x", 3.0, 1.5))
-    plain = run("-m", "tests.benchmarks.plain_script", str(source), str(work / "plain.gpkg"), str(plain_rows))
-    scaled = plain.seconds * rows / plain_rows
-    print(f"plain script: {plain.seconds:.1f} s for {plain_rows:,} polygons, {scaled:.1f} s for all in proportion")
-    found.append(
-        Figure("plain script, one polygon at a time, against measure", scaled / seconds, "x", 6.0, 15.0, at_least=True)
+def table(figures: list[Figure]) -> str:
+    """Lay figures out in columns."""
+    rows = [("figure", "measured", "target", "met", "made of")]
+    for figure in figures:
+        bound = ">=" if figure.at_least else "<="
+        targets = " then ".join(f"{bound} {target:g} {figure.unit}" for target in figure.targets)
+        rows.append((figure.name, f"{figure.measured:.2f} {figure.unit}", targets, figure.met, figure.note))
+    widths = [max(len(row[i]) for row in rows) for i in range(4)]
+    return "\n".join(
+        "  ".join([*(cell.ljust(width) for cell, width in zip(row, widths, strict=False)), row[4]]) for row in rows
     )
-    peak = max(seen.peak_bytes for seen in runs)
-    found.append(Figure(f"peak memory of all processes, {rows:,} polygons", peak / GIGABYTE, "GB", 1.5))
-    if not arguments.skip_large:
-        (work / "copy.gpkg").unlink(missing_ok=True)
-        large = measure(workload.layer(work, more), target)
-        print(f"{more:,} polygons: measure {large.seconds:.1f} s")
-        found += [
-            Figure(f"peak memory of all processes, {more:,} polygons", large.peak_bytes / GIGABYTE, "GB", 1.5),
-            Figure("the larger workload's memory against the smaller's", large.peak_bytes / peak, "x", 1.2),
-            Figure(f"time of {more:,} against {rows:,}", large.seconds / seconds, "x", 11.0 * more / (10 * rows)),
-        ]
-    vertices = 200_000 if arguments.quick else 2_000_000
-    coast = measure(workload.coast(work, vertices), target)
-    found.append(Figure(f"one polygon with {vertices:,} vertices", coast.seconds, "s", 10.0))
-    found.append(Figure("geoshape --help", median(lambda: run("-m", "geoshape", "--help"), SMALL_RUNS), "s", 0.4))
-    small = workload.layer(work, 30)
-    found.append(Figure("measure, 30 polygons", median(lambda: measure(small, target), SMALL_RUNS), "s", 2.5))
-    return found
-
-
-def main() -> None:
-    """Parse the arguments, measure, print."""
-    parser = argparse.ArgumentParser(prog="python -m tests.benchmarks", description=__doc__)
-    parser.add_argument("--work", type=Path, help="folder for workloads and outputs; kept, so that they are made once")
-    parser.add_argument("--quick", action="store_true", help="a tenth of the workloads, to see that everything runs")
-    parser.add_argument("--skip-large", action="store_true", help="leave out the workload of 2 000 000 polygons")
-    parser.add_argument("--plain-rows", type=int, default=20_000, help="rows for the plain script; its time is scaled")
-    arguments = parser.parse_args()
-    work = arguments.work or Path(tempfile.mkdtemp(prefix="geoshape-benchmarks-"))
-    work.mkdir(parents=True, exist_ok=True)
-    try:
-        lines = [figure.line() for figure in figures(work, arguments)]
-    finally:
-        if arguments.work is None:
-            shutil.rmtree(work)
-    print()
-    print(f"{'figure':<66} {'measured':>8}     {'target':<16}")
-    print("\n".join(lines))
 
 
 if __name__ == "__main__":
