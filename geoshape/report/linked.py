@@ -165,7 +165,7 @@ def _map(shapes: ColumnDataSource, plane: MapPlane) -> Plot:
 
 def _scale_bar(plot: Plot, plane: MapPlane) -> ScaleBar:
     settings: dict[str, Any] = (
-        {"dimensional": Metric(base_unit="m")} if plane.unit == "m" else {"label": "@{value} units"}
+        {"dimensional": Metric(base_unit="m", include=["mm", "m", "km"])} if plane.unit == "m" else {"label": "@{value} units"}
     )
     return ScaleBar(
         range=plot.x_range,
@@ -176,7 +176,9 @@ def _scale_bar(plot: Plot, plane: MapPlane) -> ScaleBar:
         border_line_color=None,
         bar_line_color=INK,
         bar_line_width=2,
-        bar_length=0.18,
+        bar_length=0.16,
+        margin=4,
+        padding=6,
         label_text_color=INK,
         label_text_font=FONT,
         label_text_font_size="13px",

@@ -43,8 +43,8 @@ LAYERS = (
     ("circle", "smallest circle", True),
     ("rectangle", "smallest rectangle", False),
     ("axes", "principal axes", True),
-    ("points", "points at equal arc length", False),
-    ("rebuilt", "rebuilt from harmonics", True),
+    ("points", "arc-length points", False),
+    ("rebuilt", "rebuilt outline", True),
 )
 """What the close-up draws: name, words, and whether it is drawn at first."""
 

@@ -173,7 +173,8 @@ function drawNumbers(shape) {
     const rows = page.fields.filter((field) => field.family === family).map((field) => numberRow(field, shape));
     const starts = !["moments", "spectrum", "record"].includes(family);
     return make("details", { "data-family": family, open: isOpen.get(family) ?? starts }, make("summary", {}, title),
-      make("table", {}, make("caption", { class: "unseen" }, `${title}: ${page.labels[shape]}`), make("tbody", {}, ...rows)));
+      make("table", {}, make("caption", { class: "unseen" }, `${title}: ${page.labels[shape]}`),
+        make("colgroup", {}, make("col", { class: "wide" }), make("col")), make("tbody", {}, ...rows)));
   });
   byId("closeup-numbers").replaceChildren(...blocks);
 }

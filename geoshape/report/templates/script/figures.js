@@ -103,26 +103,25 @@ function drawLegend(field, spread) {
 
 const nullKey = () => make("li", {}, make("span", { class: "swatch hatched" }), "no value");
 
-// Keep a metre as long upwards as sideways, whatever the window.
+// Keep a metre as long upwards as sideways, whatever the window; at first, leave room below for the scale bar.
 function fitMap(keepsView) {
   const { map } = models;
   const width = map.inner_width, height = map.inner_height;
   if (!(width > 0 && height > 0)) return;
+  const room = keepsView ? 0 : Math.min(SCALE_BAR_ROOM, height / 4);
   let [west, east, south, north] = extent;
   if (keepsView) [west, east, south, north] = [map.x_range.start, map.x_range.end, map.y_range.start, map.y_range.end];
-  const middleX = (west + east) / 2, middleY = (south + north) / 2;
-  const margin = keepsView ? 1 : 1.06;
-  const each = keepsView ? (east - west) / width : Math.max(((east - west) * margin) / width, ((north - south) * margin) / height);
-  const x = [middleX - (each * width) / 2, middleX + (each * width) / 2];
-  const y = [middleY - (each * height) / 2, middleY + (each * height) / 2];
-  map.x_range.setv({ start: x[0], end: x[1] });
-  map.y_range.setv({ start: y[0], end: y[1] });
-  if (!keepsView) {
-    map.x_range.setv({ reset_start: x[0], reset_end: x[1] });
-    map.y_range.setv({ reset_start: y[0], reset_end: y[1] });
-  }
+  const each = keepsView ? (east - west) / width : 1.04 * Math.max((east - west) / width, (north - south) / (height - room));
+  const middleX = (west + east) / 2, middleY = (south + north) / 2 - (each * room) / 2;
+  const view = [middleX - (each * width) / 2, middleX + (each * width) / 2, middleY - (each * height) / 2, middleY + (each * height) / 2];
+  map.x_range.setv({ start: view[0], end: view[1] });
+  map.y_range.setv({ start: view[2], end: view[3] });
+  if (keepsView) return;
+  map.x_range.setv({ reset_start: view[0], reset_end: view[1] });
+  map.y_range.setv({ reset_start: view[2], reset_end: view[3] });
 }
 
+const SCALE_BAR_ROOM = 64;
 let extent = [0, 1, 0, 1];
 
 function extentOf(xs, ys) {

@@ -107,8 +107,7 @@ function titleWithUnit(field) {
 function make(tag, settings = {}, ...children) {
   const element = document.createElement(tag);
   for (const [name, value] of Object.entries(settings)) {
-    if (name === "class") element.className = value;
-    else if (name.startsWith("on")) element.addEventListener(name.slice(2), value);
+    if (name.startsWith("on")) element.addEventListener(name.slice(2), value);
     else if (value !== null && value !== false) element.setAttribute(name, value === true ? "" : value);
   }
   element.append(...children.filter((child) => child !== null && child !== undefined));
