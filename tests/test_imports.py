@@ -30,10 +30,12 @@ ALLOWED = {
     "decide": {"formulas", "rings", "geometry", *LEAVES},
     "task": {"measuring", "ground", "geometry", *LEAVES},
     "run": {"task", "measuring", "ground", "geometry", "rings", "layers", "pool", "decide", *LEAVES},
+    "acting": {"task", "measuring", "ground", "geometry", "formulas", "rings", "layers", "pool", "decide", *LEAVES},
+    "frame_decisions": {"frames", "acting", "measuring", "ground", "geometry", "rings", "layers", "decide", *LEAVES},
     "report": {"decide", "measuring", "ground", "geometry", "formulas", "rings", *LEAVES},
-    "cli": {"run", "decide", "report", "measuring", "inspection", "layers", "pool", *LEAVES},
+    "cli": {"run", "acting", "decide", "report", "measuring", "inspection", "layers", "pool", *LEAVES},
     # The package re-exports its public names.
-    "geoshape": {"frames", "run", "decide", "report", "inspection", *LEAVES},
+    "geoshape": {"frames", "frame_decisions", "run", "acting", "decide", "report", "inspection", *LEAVES},
     "__main__": {"cli"},
 }
 
@@ -57,7 +59,7 @@ ONLY_IN_CLI = {"click", "rich"}
 ONLY_IN = {
     # library: the stages that may import it
     "pyogrio": {"layers"},
-    "pyproj": {"ground", "layers", "inspection", "cli", "report", "run"},
+    "pyproj": {"ground", "layers", "inspection", "cli", "report", "run", "acting"},
     "bokeh": {"report"},
     "jinja2": {"report"},
 }

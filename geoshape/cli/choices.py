@@ -51,7 +51,19 @@ class Manner:
     verbose: bool
 
 
-def _bundle(name: str, build: Callable[[dict[str, Any]], object], *parameters: Decorator) -> Decorator:
+def bundle(name: str, build: Callable[[dict[str, Any]], object], *parameters: Decorator) -> Decorator:
+    """Make one decorator of several parameters, whose values reach the command as one object.
+
+    Parameters
+    ----------
+    name : str
+        Argument of the command that takes the object.
+    build : callable
+        Makes it from the parameters' values by name.
+    *parameters : decorators
+        As click's ``option`` and ``argument`` make them.
+    """
+
     def decorate(command: Function) -> Function:
         @wraps(command)
         def gathered(**values: Any) -> Any:
@@ -110,7 +122,7 @@ prefix_option = click.option("--prefix", default="", help="Put this before the n
 
 input_argument = click.argument("input_path", metavar="INPUT")
 
-source_options = _bundle(
+source_options = bundle(
     "source",
     lambda values: Source(path=values["input_path"], layer=values["layer"], where=values["where"], bbox=values["bbox"]),
     input_argument,
@@ -126,7 +138,7 @@ source_options = _bundle(
     ),
 )
 
-target_options = _bundle(
+target_options = bundle(
     "target",
     lambda values: Target(path=values["output_path"], layer=values["output_layer"], overwrite=values["overwrite"]),
     click.argument("output_path", metavar="OUTPUT"),
@@ -141,7 +153,7 @@ def _choice(kind: type[Edges | Spectrum | Parts | Holes | Invalid]) -> click.Cho
 
 assume_crs_option = click.option("--assume-crs", metavar="CRS", help="CRS of a layer that does not say its own.")
 
-measure_options = _bundle(
+measure_options = bundle(
     "options",
     lambda values: MeasureOptions(**values),
     click.option(
@@ -215,7 +227,7 @@ no_color_option = click.option(
 
 json_option = click.option("--json", "as_json", is_flag=True, help="Write the result as JSON on standard output.")
 
-manner_options = _bundle(
+manner_options = bundle(
     "manner",
     lambda values: Manner(values["jobs"], values["as_json"], values["quiet"], values["verbose"]),
     click.option(

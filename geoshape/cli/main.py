@@ -16,6 +16,8 @@ _COMMANDS = {
     "inspect": "look at a layer: can it be measured, and what is wrong with it",
     "measure": "measure every polygon and write the layer with its new columns",
     "flag": "flag features by rules, or because their shape is unlike the rest",
+    "match": "find the template that each outline is most like",
+    "group": "sort features into groups of alike shape, with a prototype of each",
     "columns": "list the columns: name, unit, meaning, source",
 }
 

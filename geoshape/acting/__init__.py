@@ -1,0 +1,1 @@
+"""Decisions from file to file: read a layer, measure what is missing, decide, write. Prints nothing."""
