@@ -13,6 +13,7 @@ import pyarrow.compute as pc
 from numpy.typing import NDArray
 
 from geoshape.columns import RECORD, Column, Kind
+from geoshape.decide.flag import FLAG_COLUMNS
 from geoshape.errors import OptionError
 from geoshape.options import MeasureOptions
 from geoshape.rings import FloatArray, IntArray
@@ -23,7 +24,6 @@ STANDARD_ERROR = "_se"
 """Ending of the column that holds another column's standard error."""
 
 ATTRIBUTE = "attribute"
-DECISION = "decision"
 ERROR = "error"
 
 MAX_CLASSES = 12
@@ -133,14 +133,24 @@ class ReportOptions:
             raise OptionError(f"seed = {self.seed} cannot be used; give 0 or more")
 
 
-_DECISIONS = {
-    "flag": "whether a rule or a statistical test singled the shape out",
-    "flag_reasons": "which rules or tests did",
-    "flag_score": "how far the shape stands out",
-    "group": "group of alike shapes",
-    "group_distance": "distance to the group's prototype",
-    "is_prototype": "whether the shape is its group's prototype",
+DECISIONS = ("flag", "group", "match")
+"""Families of columns that a decision has added."""
+
+_DECIDED = {column.name: column for column in FLAG_COLUMNS} | {
+    name: Column(name, name[:10], Kind.NUMBER, "1", None, None, meaning, "", "group")
+    for name, meaning in (
+        ("group", "number of the group of alike shapes"),
+        ("group_distance", "distance from the group's centre"),
+        ("group_note", "why the shape has no group"),
+        ("is_prototype", "whether the shape is nearest to its group's centre"),
+    )
 }
+
+_WHOLE_CLASSES = {"group", "flag", "is_prototype"}
+"""Columns of whole numbers that are classes all the same."""
+
+_REMARKS = {"shape_note", "flag_reasons", "flag_note", "group_note"}
+"""Text columns that are no classes however few their values."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -175,6 +185,7 @@ class View:
         """The options that the layer was measured with, as far as its lineage tells."""
         known = {name for name in MeasureOptions.__dataclass_fields__ if name != "families"}
         given = self.data.lineage.get("options") or {}
+        given = given.get("measure") or given
         try:
             return MeasureOptions(**{name: value for name, value in given.items() if name in known})
         except (OptionError, TypeError):
@@ -195,9 +206,10 @@ class View:
         if base is not None:
             meaning = f"standard error of {base.name}"
             return replace(base, name=name, kind=holds, low=0.0, high=None, meaning=meaning, family=ERROR)
-        decision = _DECISIONS.get(name.removeprefix(self.prefix))
-        family, meaning = (DECISION, decision) if decision else (ATTRIBUTE, "attribute of the layer")
-        return Column(name, name[:10], holds, "", None, None, meaning, "", family)
+        decided = _DECIDED.get(name.removeprefix(self.prefix))
+        if decided is not None:
+            return replace(decided, name=name, kind=holds)
+        return Column(name, name[:10], holds, "", None, None, "attribute of the layer", "", ATTRIBUTE)
 
     @cached_property
     def by_name(self) -> dict[str, Column]:
@@ -244,15 +256,15 @@ class View:
 
     @cached_property
     def classes(self) -> tuple[str, ...]:
-        """Columns of 2 to 12 different texts, decisions and attributes first."""
-        found = [field.name for field in self.fields if self._is_class(field)]
-        return tuple(sorted(found, key=lambda name: self.by_name[name].family == RECORD))
+        """Columns of 2 to 12 different texts or group numbers; attributes first, then groups, flags, and the status."""
+        found = [field for field in self.fields if self._is_class(field)]
+        return tuple(field.name for field in sorted(found, key=lambda field: _CLASS_ORDER.get(field.family, 3)))
 
     def _is_class(self, field: Column) -> bool:
         bare = field.name.removeprefix(self.prefix)
-        if field.kind is not Kind.TEXT and bare != "group":
+        if field.kind is not Kind.TEXT and bare not in _WHOLE_CLASSES:
             return False
-        if bare in {"shape_note", "flag_reasons"} or pa.types.is_nested(self.data.table.schema.field(field.name).type):
+        if bare in _REMARKS or pa.types.is_nested(self.data.table.schema.field(field.name).type):
             return False
         return 2 <= len(self.levels(field.name)) <= MAX_CLASSES
 
@@ -295,10 +307,13 @@ class View:
         if not text:
             return f"row {row + 1}"
         # A bare number says too little in a sentence.
-        return f"{name} {text}" if text.isdecimal() else text
+        kind = str(name).removesuffix("_id").removesuffix("_").replace("_", " ")
+        return f"{kind} {text}" if text.isdecimal() else text
 
 
-_FAMILY_ORDER = {ERROR: 1, DECISION: 2, ATTRIBUTE: 3}
+_FAMILY_ORDER = {ERROR: 1, **dict.fromkeys(DECISIONS, 2), ATTRIBUTE: 3}
+
+_CLASS_ORDER = {ATTRIBUTE: 0, "group": 1, "flag": 2}
 
 _LABEL_NAMES = ("name", "label", "title", "_name", "name_", "_id", "id", "code", "key", "number")
 
@@ -333,4 +348,6 @@ def _as_text(value: object) -> str | None:
         return "yes" if value else "no"
     if isinstance(value, bytes):
         return f"{len(value)} bytes"
+    if isinstance(value, float) and value.is_integer():
+        return str(int(value))
     return str(value)

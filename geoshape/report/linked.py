@@ -165,7 +165,9 @@ def _map(shapes: ColumnDataSource, plane: MapPlane) -> Plot:
 
 def _scale_bar(plot: Plot, plane: MapPlane) -> ScaleBar:
     settings: dict[str, Any] = (
-        {"dimensional": Metric(base_unit="m", include=["mm", "m", "km"])} if plane.unit == "m" else {"label": "@{value} units"}
+        {"dimensional": Metric(base_unit="m", include=["mm", "m", "km"])}
+        if plane.unit == "m"
+        else {"label": "@{value} units"}
     )
     return ScaleBar(
         range=plot.x_range,

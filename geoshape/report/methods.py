@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable
+from collections.abc import Iterable, Mapping
 from dataclasses import dataclass
 from itertools import groupby
 from typing import Any
@@ -10,7 +10,7 @@ from typing import Any
 import numpy as np
 
 from geoshape.columns import RECORD, Column, Kind
-from geoshape.report.data import ATTRIBUTE, DECISION, ERROR, STANDARD_ERROR, View
+from geoshape.report.data import ATTRIBUTE, ERROR, STANDARD_ERROR, View
 from geoshape.report.placing import layer_crs
 from geoshape.report.sentences import status_counts
 from geoshape.report.wording import (
@@ -43,7 +43,9 @@ FAMILY_TITLES = {
     "moments": "Moment invariants",
     "spectrum": "Spectrum of the outline",
     ERROR: "Standard errors",
-    DECISION: "Decisions",
+    "flag": "Flags",
+    "group": "Groups",
+    "match": "Match to a template",
     ATTRIBUTE: "Attributes of the layer",
 }
 
@@ -128,13 +130,19 @@ def _distortion_text(view: View) -> str:
     return f"{text}; above 1\u00b0 in {count_text(above, 'shape')}" if above else text
 
 
-def _options_text(options: dict[str, Any]) -> str:
-    return "; ".join(f"{name.replace('_', ' ')}: {_option_text(value)}" for name, value in options.items() if value)
+def _options_text(options: Mapping[str, Any]) -> str:
+    return "; ".join(
+        f"{str(name).replace('_', ' ')}: {_option_text(value)}"
+        for name, value in options.items()
+        if value not in (None, "", False, [], {})
+    )
 
 
 def _option_text(value: object) -> str:
+    if isinstance(value, Mapping):
+        return f"({_options_text(value)})"
     if isinstance(value, list | tuple):
-        return ", ".join(str(item) for item in value)
+        return ", ".join(_option_text(item) for item in value)
     return "yes" if value is True else str(value)
 
 

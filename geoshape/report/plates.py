@@ -9,9 +9,9 @@ import numpy as np
 from geoshape.columns import Column
 from geoshape.report.colours import CLASSES, OTHER, RAMP, ramp_colours
 from geoshape.report.data import View
-from geoshape.report.directions import Rayleigh, rayleigh
 from geoshape.report.encoding import simplified
 from geoshape.report.placing import MapPlane
+from geoshape.report.sentences import prevailing
 from geoshape.report.sheet import KEY_COLUMNS, path_of
 from geoshape.report.statistics import (
     ROSE_BINS,
@@ -113,7 +113,6 @@ class Rose:
         Both halves of each sector as one path in a drawing of -100 ... 100, north up.
     rings : tuple of Tick
         Radii of round counts.
-    result : Rayleigh or None
     mean_x, mean_y : float
         End of the mean axis in the drawing; 0 where none prevails.
     count : int
@@ -122,7 +121,6 @@ class Rose:
 
     sectors: tuple[tuple[str, int, float], ...]
     rings: tuple[Tick, ...]
-    result: Rayleigh | None
     mean_x: float
     mean_y: float
     count: int
@@ -146,12 +144,12 @@ def rose(view: View) -> Rose | None:
         for value in nice_ticks(0.0, most, 4)
         if value > 0 and value == int(value)
     )
-    result = rayleigh(azimuth)
+    result = prevailing(view)
     mean_x = mean_y = 0.0
-    if result is not None and result.probability < 0.05:
+    if result is not None and result.is_clear:
         angle = np.radians(result.mean_deg)
         mean_x, mean_y = round(106.0 * float(np.sin(angle)), 1), round(-106.0 * float(np.cos(angle)), 1)
-    return Rose(sectors, rings, result, mean_x, mean_y, int(counts.sum()))
+    return Rose(sectors, rings, mean_x, mean_y, int(counts.sum()))
 
 
 def _sector(azimuth_deg: float, width_deg: float, radius: float) -> str:

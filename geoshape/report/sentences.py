@@ -8,8 +8,8 @@ from dataclasses import dataclass
 import numpy as np
 
 from geoshape.columns import MEASURED
+from geoshape.decide.circular import mean_directions
 from geoshape.report.data import View
-from geoshape.report.directions import Rayleigh, rayleigh
 from geoshape.report.sampling import is_flagged
 from geoshape.report.wording import area_text, compass, count_text, number_text, share_text, whole_text
 from geoshape.rings import FloatArray
@@ -178,22 +178,53 @@ def flag_sentence(view: View) -> str | None:
     return f"{count_text(count, 'shape')} of {whole_text(n)} {verb} flagged ({share_text(count, n)})."
 
 
-def direction_sentence(view: View) -> str | None:
-    """Say whether the long axes prefer a direction; None where fewer than eight have one."""
+@dataclass(frozen=True)
+class Prevailing:
+    """What the long axes have in common.
+
+    Attributes
+    ----------
+    count : int
+        Shapes with a direction.
+    mean_deg : float
+        Mean axial direction, clockwise from north, in [0, 180).
+    length : float
+        Length of the mean vector of doubled angles: 0 even, 1 all alike.
+    probability : float
+        Of so long a vector, were no direction preferred.
+    """
+
+    count: int
+    mean_deg: float
+    length: float
+    probability: float
+
+    @property
+    def is_clear(self) -> bool:
+        """Whether one direction can be said to prevail."""
+        return self.probability < PREVAILS_BELOW
+
+
+def prevailing(view: View) -> Prevailing | None:
+    """Test the long axes for a preferred direction; None where too few have one."""
     azimuth = view.bare("axis_azimuth_deg")
     if azimuth is None:
         return None
-    result = rayleigh(azimuth)
+    found = mean_directions(azimuth, np.zeros(len(azimuth), dtype=np.int64), 1)
+    if np.isnan(found.rayleigh_p[0]) or np.isnan(found.mean_deg[0]):
+        return None
+    count = int(np.count_nonzero(~np.isnan(azimuth)))
+    return Prevailing(count, float(found.mean_deg[0]), float(found.resultant_length[0]), float(found.rayleigh_p[0]))
+
+
+def direction_sentence(view: View) -> str | None:
+    """Say whether the long axes prefer a direction; None where too few have one."""
+    result = prevailing(view)
     if result is None:
         return None
-    if result.probability < PREVAILS_BELOW:
-        return (
-            f"The long axes prefer one direction: {compass(result.mean_deg)}, {result.mean_deg:.0f}\u00b0 on average "
-            f"({_test_text(result)})."
-        )
-    return f"The long axes prefer no direction ({_test_text(result)})."
-
-
-def _test_text(result: Rayleigh) -> str:
     p = "p < 0.001" if result.probability < 0.001 else f"p = {number_text(result.probability, 2)}"
-    return f"Rayleigh test on doubled angles, R = {result.length:.2f}, n = {whole_text(result.count)}, {p}"
+    test = f"Rayleigh test on doubled angles, R = {result.length:.2f}, n = {whole_text(result.count)}, {p}"
+    if not result.is_clear:
+        return f"The long axes prefer no direction ({test})."
+    mean = f"{compass(result.mean_deg)}, {result.mean_deg:.0f}\u00b0 on average"
+    return f"The long axes prefer one direction: {mean} ({test})."
