@@ -3,7 +3,9 @@
 from __future__ import annotations
 
 import os
+import sqlite3
 from collections.abc import Sequence
+from contextlib import closing
 from dataclasses import dataclass
 from pathlib import Path
 
@@ -178,7 +180,7 @@ def plan_output(
         columns=tuple(content.columns),
         crs_wkt=content.crs_wkt,
         geometry_type=content.geometry_type,
-        keeps_layers=path is not None and form is GEOPACKAGE and _is_geopackage(path),
+        keeps_layers=path is not None and form is GEOPACKAGE and _has_other_layers(path, output_layer or path.stem),
         warnings=tuple(_warnings(form, content)),
     )
 
@@ -228,6 +230,18 @@ def _is_geopackage(path: Path) -> bool:
     with path.open("rb") as file:
         header = file.read(_SQLITE_HEADER_BYTES)
     return header.startswith(_SQLITE_MAGIC) and header[_APPLICATION_ID] in _GEOPACKAGE_IDS
+
+
+def _has_other_layers(path: Path, layer: str) -> bool:
+    """Whether a GeoPackage holds more than the layer to be written; a damaged one does, so as not to be lost."""
+    if not _is_geopackage(path):
+        return False
+    query = "SELECT count(*) FROM gpkg_contents WHERE lower(table_name) <> lower(?)"
+    try:
+        with closing(sqlite3.connect(path)) as connection:
+            return bool(connection.execute(query, (layer,)).fetchone()[0])
+    except sqlite3.Error:
+        return True
 
 
 def _written_names(target: str, form: Format, content: LayerContent) -> tuple[str, ...]:
