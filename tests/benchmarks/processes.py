@@ -15,6 +15,10 @@ SAMPLE_EVERY_S = 0.05
 ROOT = Path(__file__).parent.parent.parent
 
 
+class CommandFailedError(Exception):
+    """A command that was to be measured ended with an error."""
+
+
 @dataclass(frozen=True)
 class Finished:
     """A command that ran.
@@ -36,7 +40,7 @@ class Finished:
 
 
 def run(command: list[str], *, watch_memory: bool = False) -> Finished:
-    """Run a command to its end; a failure stops the benchmarks with what it said."""
+    """Run a command to its end; one that fails raises what it said."""
     began = time.perf_counter()
     with subprocess.Popen(command, stdout=subprocess.PIPE, stderr=subprocess.PIPE, text=True, cwd=ROOT) as process:
         watch = _Watch(process.pid) if watch_memory else None
@@ -44,7 +48,7 @@ def run(command: list[str], *, watch_memory: bool = False) -> Finished:
         seconds = time.perf_counter() - began
         peak = watch.stop() if watch else 0
     if process.returncode:
-        raise SystemExit(f"{' '.join(command)}: exit code {process.returncode}\n{complaint or output}")
+        raise CommandFailedError(f"{' '.join(command)}: exit code {process.returncode}\n{complaint or output}")
     return Finished(seconds, peak, output)
 
 
