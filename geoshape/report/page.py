@@ -13,6 +13,7 @@ import geoshape
 from geoshape.columns import Kind
 from geoshape.report import methods, plates, sentences
 from geoshape.report.data import ReportData, ReportOptions, View
+from geoshape.report.flags import flag_list
 from geoshape.report.linked import linked_figures
 from geoshape.report.payload import page_data
 from geoshape.report.placing import CloseUps, MapPlane, place_close_ups, place_on_map
@@ -31,7 +32,6 @@ WIDE_RATIO = 1.5
 """Width over height from which the map takes the whole width of the page."""
 
 PRINTED_ROWS = 150
-FLAG_ROWS = 60
 PRINTED_COLUMNS = 7
 
 SCRIPTS = ("values", "selection", "figures", "table", "closeup", "sheet")
@@ -112,7 +112,7 @@ def _page(view: View) -> str:
         "boxes": plates.box_plots(view),
         "class_title": plain_name(view.by_name[classes], view.prefix) if classes else "",
         "groups": sheet.of_groups(),
-        "flags": _flags(view, sample),
+        "flags": flag_list(view, sheet),
         "flag_sentence": sentences.flag_sentence(view),
         "facts": methods.facts(view),
         "paragraph": methods.paragraph(view),
@@ -186,46 +186,6 @@ def _tile(finding: sentences.Finding, rows: IntArray, shapes: CloseUps) -> Tile:
     index = int(np.searchsorted(rows, finding.row))
     path = small_paths(shapes.outline, np.array([index]), FINDING_HALF)[0]
     return Tile(index, finding.label, "", path, 1.0, "")
-
-
-@dataclass(frozen=True)
-class _FlagRow:
-    index: int | None
-    label: str
-    reasons: str
-    score: str
-
-
-@dataclass(frozen=True)
-class _Flags:
-    rows: tuple[_FlagRow, ...]
-    left: int
-    has_reasons: bool
-    has_score: bool
-
-
-def _flags(view: View, sample: Sample) -> _Flags | None:
-    flagged = is_flagged(view)
-    if flagged is None or not flagged.any():
-        return None
-    rows = np.flatnonzero(flagged)
-    score = view.bare("flag_score")
-    if score is not None:
-        rows = rows[np.argsort(-np.nan_to_num(score[rows], nan=-np.inf), kind="stable")]
-    shown = rows[:FLAG_ROWS]
-    reasons_name = view.named("flag_reasons")
-    reasons = [""] * len(shown) if reasons_name is None else view.texts(reasons_name, shown)
-    place = {int(row): index for index, row in enumerate(sample.rows)}
-    found = tuple(
-        _FlagRow(
-            place.get(int(row)),
-            view.label(int(row)),
-            reason or "",
-            NULL if score is None else number_text(float(score[row]), 3),
-        )
-        for row, reason in zip(shown, reasons, strict=True)
-    )
-    return _Flags(found, len(rows) - len(shown), reasons_name is not None, score is not None)
 
 
 @dataclass(frozen=True)

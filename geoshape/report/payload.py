@@ -32,17 +32,18 @@ MAX_TEXT = 120
 
 SHOWN_AT_FIRST = (
     "shape_status",
+    "group",
+    "flag_reasons",
     "area_m2",
-    "perimeter_m",
     "polsby_popper",
     "axis_ratio",
     "axis_azimuth_deg",
     "convexity",
     "fd_departure",
-    "group",
-    "flag",
-    "flag_reasons",
+    "perimeter_m",
 )
+MAX_SHOWN = 9
+"""Columns that fit on a screen; attributes take two of them."""
 
 
 def page_data(view: View, sample: Sample, shapes: CloseUps, plane: MapPlane, first_row: int | None) -> dict[str, Any]:
@@ -107,7 +108,7 @@ def _field(view: View, field: Column, rows: IntArray) -> dict[str, Any]:
         described["texts"] = [None if text is None else _cut(text) for text in view.texts(field.name, rows)]
         return described
     values = view.numbers(field.name)
-    counted = histogram(values, is_log=is_logarithmic(values, field))
+    counted = histogram(values, is_log=is_logarithmic(values, field), is_whole=field.kind is Kind.COUNT)
     described |= {
         "log": counted.is_log,
         "decimals": None if counted.is_log else _decimals(values),
@@ -154,7 +155,8 @@ def _shown(view: View) -> list[str]:
     measured = [name for name in (view.named(bare) for bare in SHOWN_AT_FIRST) if name]
     if all(entry.is_measured for entry in status_counts(view)):
         measured = [name for name in measured if name != view.named("shape_status")]
-    return [*attributes[:2], *measured]
+    names = [*attributes[:2], *measured][:MAX_SHOWN]
+    return [field.name for field in view.fields if field.name in names]
 
 
 def _map(plane: MapPlane) -> dict[str, Any]:

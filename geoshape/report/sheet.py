@@ -53,7 +53,7 @@ class Tile:
     scale : float
         Its extent over that of the largest of its row.
     place : str
-        ``"lowest"``, ``"typical"``, ``"highest"``, ``"prototype"`` or ``"member"``.
+        ``"lowest"``, ``"typical"``, ``"highest"``, ``"prototype"``, ``"member"`` or ``"flagged"``.
     """
 
     index: int
@@ -124,10 +124,15 @@ class Sheet:
         if name is None:
             return ()
         groups = np.array(self.view.texts(name), dtype=object)
-        levels = [level for level in dict.fromkeys(groups[self.rows].tolist()) if level is not None]
+        levels = self.view.levels(name) or list(dict.fromkeys(text for text in groups.tolist() if text is not None))
         sizes = {level: int(np.count_nonzero(groups == level)) for level in levels}
         levels.sort(key=lambda level: -sizes[level])
         return tuple(self._of_group(level, np.flatnonzero(groups == level)) for level in levels[:MAX_GROUPS])
+
+    def of_flagged(self, rows: IntArray, reasons: list[str]) -> SheetRow:
+        """Give flagged shapes with the reasons."""
+        captions = {int(row): reason for row, reason in zip(rows, reasons, strict=True)}
+        return self._row("Flagged", "", [(int(row), "flagged") for row in rows], captions)
 
     def _of_group(self, level: str, members: IntArray) -> SheetRow:
         distance = self.view.bare("group_distance")

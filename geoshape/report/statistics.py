@@ -73,8 +73,17 @@ class Histogram:
         return np.asarray(self.start + self.step * np.arange(len(self.counts) + 1), dtype=np.float64)
 
 
-def histogram(values: FloatArray, *, is_log: bool) -> Histogram:
+def histogram(values: FloatArray, *, is_log: bool, is_whole: bool = False) -> Histogram:
     """Count values in bins whose width follows Freedman and Diaconis (1981), between 10 and 36 bins.
+
+    Parameters
+    ----------
+    values : (n,) float64
+        NaN is passed over.
+    is_log : bool
+        Count log10 of the values.
+    is_whole : bool
+        Values are whole numbers: a few different ones have a bin each.
 
     Examples
     --------
@@ -86,6 +95,9 @@ def histogram(values: FloatArray, *, is_log: bool) -> Histogram:
     if not len(known):
         return Histogram(0.0, 1.0, np.zeros(1, dtype=np.int64), is_log)
     low, high = float(known.min()), float(known.max())
+    if is_whole and not is_log and high - low < MAX_BINS:
+        counts = np.bincount((known - low).astype(np.int64))
+        return Histogram(low - 0.5, 1.0, counts, is_log)
     if high == low:
         half = 0.5 * max(abs(low), 1.0) * 1e-3
         return Histogram(low - half, 2.0 * half, np.array([len(known)]), is_log)
