@@ -184,19 +184,28 @@ class Opened:
             raise
         return spool
 
-    def plan(self, target: Target, decided: Sequence[Column], content: LayerContent | None = None) -> OutputPlan:
-        """Check all that can stop the output: attributes, measured columns, then those decided."""
-        prefix = self.how.measure.prefix
-        columns = prefixed((*self.missing, *decided), prefix)
-        content = replace(content, columns=columns) if content else LayerContent.like(self.info, columns)
-        content = replace(content, crs_wkt=content.crs_wkt or (self.crs.to_wkt() if self.crs else None))
-        return plan_output(
-            target.path, content, sources=(self.info,), output_layer=target.layer, overwrite=target.overwrite
-        )
+    @property
+    def crs_wkt(self) -> str | None:
+        """The layer's CRS, or the one assumed, as WKT."""
+        return self.info.crs_wkt or (self.crs.to_wkt() if self.crs else None)
 
-    def write(self, plan: OutputPlan, batches: Iterable[OutputBatch], command: str, options: dict[str, Any]) -> Written:
+    def plan(self, target: Target, decided: Sequence[Column], geometry_type: str | None = None) -> OutputPlan:
+        """Check all that can stop the output: attributes, measured columns, then those decided."""
+        content = LayerContent.like(self.info, prefixed((*self.missing, *decided), self.how.measure.prefix))
+        content = replace(content, crs_wkt=self.crs_wkt, geometry_type=geometry_type or content.geometry_type)
+        return plan_for(target, content, (self.info,))
+
+    def write(
+        self,
+        plan: OutputPlan,
+        batches: Iterable[OutputBatch],
+        command: str,
+        options: dict[str, Any],
+        notes: Sequence[str] = (),
+    ) -> Written:
         """Write rows with their lineage, and sum up."""
-        warnings = (*self.info.warnings, *plan.warnings, *(self.ground.warnings if self.ground else ()))
+        on_ground = self.ground.warnings if self.ground else ()
+        warnings = (*self.info.warnings, *plan.warnings, *on_ground, *notes)
 
         def lineage() -> Lineage:
             return self.lineage(command, options, warnings)
@@ -286,6 +295,11 @@ def bounds_of(arrays: Iterable[np.ndarray[Any, np.dtype[np.object_]]]) -> Bounds
     west, south = boxes[:, :2].min(axis=0).tolist()
     east, north = boxes[:, 2:].max(axis=0).tolist()
     return west, south, east, north
+
+
+def plan_for(target: Target, content: LayerContent, sources: Sequence[LayerInfo]) -> OutputPlan:
+    """Check all that can stop an output."""
+    return plan_output(target.path, content, sources=sources, output_layer=target.layer, overwrite=target.overwrite)
 
 
 def with_columns(batch: LayerBatch, columns: Sequence[Column], values: Any, schema: pa.Schema) -> LayerBatch:

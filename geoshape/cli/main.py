@@ -18,6 +18,7 @@ _COMMANDS = {
     "flag": "flag features by rules, or because their shape is unlike the rest",
     "match": "find the template that each outline is most like",
     "group": "sort features into groups of alike shape, with a prototype of each",
+    "compare": "compare two surveys of the same ground: what was kept, split, merged, lost, new",
     "summarise": "statistics by class or zone, mean directions included",
     "columns": "list the columns: name, unit, meaning, source",
 }
