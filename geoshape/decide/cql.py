@@ -23,7 +23,7 @@ import numpy as np
 import pyarrow as pa
 import pyarrow.compute as pc
 
-from geoshape.decide.syntax import Expression, Literal, Property
+from geoshape.decide.syntax import MAX_EXACT, Expression, Literal, Property
 from geoshape.decide.tabular import Rows, whole
 
 _COMPARISONS: dict[str, Callable[..., pa.Array | pa.Scalar]] = {
@@ -149,23 +149,27 @@ def _compare(name: str, left: Values, right: Values) -> Values:
 
 def _among(values: Values, candidates: list[Values]) -> Values:
     """Compare with each candidate; values written out are looked up together, as there may be thousands of them."""
-    written: dict[pa.DataType, list[object]] = {}
-    found = []
+    listed, found = [], []
     for candidate in candidates:
-        if isinstance(candidate, pa.Scalar) and isinstance(values, pa.Array) and candidate.type == values.type:
-            written.setdefault(candidate.type, []).append(candidate.as_py())
-        elif (
-            isinstance(candidate, pa.Scalar)
-            and isinstance(values, pa.Int64Array)
-            and float(candidate.as_py()).is_integer()
-        ):
-            written.setdefault(values.type, []).append(int(candidate.as_py()))
-        else:
+        value = _listed(values, candidate)
+        if value is None:
             found.append(_compare("=", values, candidate))
-    for kind, listed in written.items():
-        is_listed = pc.is_in(values, pa.array(listed, kind))
+        else:
+            listed.append(value)
+    if listed:
+        is_listed = pc.is_in(values, pa.array(listed, values.type))
         found.append(pc.if_else(pc.is_valid(values), is_listed, pa.scalar(None, pa.bool_())))
     return reduce(pc.or_kleene, found)
+
+
+def _listed(values: Values, candidate: Values) -> object:
+    """Value of a candidate that is written out and of the column's type; None for any other."""
+    if not isinstance(candidate, pa.Scalar) or not isinstance(values, pa.Array):
+        return None
+    value = candidate.as_py()
+    if pa.types.is_integer(values.type) and isinstance(value, float) and value.is_integer() and abs(value) < MAX_EXACT:
+        return int(value)
+    return value if candidate.type == values.type else None
 
 
 def _as_floats(values: Values) -> Values:

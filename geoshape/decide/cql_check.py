@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import datetime as dt
+import re
 from collections.abc import Callable
 from enum import StrEnum
 
@@ -24,6 +25,7 @@ class ValueKind(StrEnum):
     ANY = "empty"
 
 
+_LONE_ESCAPE = re.compile(r"(?<!\\)(\\\\)*\\\Z")
 _ORDERED = frozenset({ValueKind.NUMBER, ValueKind.TEXT, ValueKind.DATE, ValueKind.TIMESTAMP})
 _ORDERINGS = frozenset({"<", "<=", ">", ">=", "between"})
 _ARROW_KINDS: tuple[tuple[Callable[[pa.DataType], bool], ValueKind], ...] = (
@@ -110,7 +112,7 @@ class _Checker:
         if count == 0:
             remedy = suggestion(node.name, self._schema.names)
             if node.is_quoted:
-                remedy += f" or, if it is text, write '{node.name}'"
+                remedy += f"; if it is text, write '{node.name}'"
             raise self._error(node, f"column {node.name!r} is not in the layer; {remedy}")
         if count > 1:
             raise self._error(node, f"column {node.name!r} is there {count} times; rename all but one")
@@ -135,10 +137,12 @@ class _Checker:
     def _like(self, node: Operation) -> None:
         self._all(node, ValueKind.TEXT)
         pattern = node.args[1]
-        if any(isinstance(leaf, Property) for leaf in leaves(pattern)):
-            raise self._error(
-                pattern, f"LIKE takes a pattern in quotes, and {self._shown(pattern)} is none; compare with ="
-            )
+        for leaf in leaves(pattern):
+            if isinstance(leaf, Property):
+                message = f"LIKE takes a pattern in quotes, and {self._shown(pattern)} is none; compare with ="
+                raise self._error(pattern, message)
+            if _LONE_ESCAPE.search(str(leaf.value)):
+                raise self._error(pattern, "the pattern ends with a single backslash; write two for a backslash")
 
     def _comparison(self, node: Operation) -> None:
         first, kind = node.args[0], ValueKind.ANY
@@ -146,7 +150,7 @@ class _Checker:
             other = self.kind(arg)
             if ValueKind.ANY not in {kind, other} and other is not kind:
                 message = f"{self._shown(first)} is {kind} and {self._shown(arg)} is {other}; they cannot be compared"
-                raise self._error(first, message + _remedy(kind, other))
+                raise self._error(arg if first.at is None else first, message + _remedy(kind, other))
             if kind is ValueKind.ANY:
                 first, kind = arg, other
         if node.name in _ORDERINGS and kind not in _ORDERED and kind is not ValueKind.ANY:

@@ -102,7 +102,7 @@ class UnusualFit:
         """Name a class in a message."""
         if self.within is None:
             return "all features"
-        return f"{self.within} is null" if value is None else f"{self.within} = {value}"
+        return f"{self.within} null" if value is None else f"{self.within} {value}"
 
 
 @dataclass(frozen=True, eq=False)
@@ -178,7 +178,7 @@ def score_unusual(rows: Rows, fit: UnusualFit) -> Scores:
     for value, members in _members(_classes(rows, fit.within)):
         ordinary = fit.classes.get(value)
         if ordinary is None:
-            _explain(scores, members, [f"no score, as {fit.label(value)} in no row that was fitted"] * len(members))
+            _explain(scores, members, [f"no score, as {fit.label(value)} is in no row that was fitted"] * len(members))
             continue
         distances = ordinary.distances(values[members])
         scores.score[members] = distances

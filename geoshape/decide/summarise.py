@@ -112,7 +112,7 @@ class Summary:
         (sd / mean, where the mean is positive), ``min``, the quantiles (``q05`` ...; linear interpolation), ``max``,
         ``mean_direction_deg``, ``resultant_length`` and ``rayleigh_p``. What does not apply is null.
     by : tuple of str
-        Fields that hold the class; a class column whose name is that of another field gets ``_class`` behind it.
+        Fields that hold the class; ``class_`` stands before a class column's name that another field has.
     variables : tuple of Variable
         Columns summarised, in order.
     weights : str or None
@@ -168,7 +168,7 @@ def summarise(rows: Rows, options: SummaryOptions | None = None) -> Summary:
         shares=options.quantiles,
     )
     parts = [_statistics_of(numbers(rows, variable.name), variable, task) for variable in variables]
-    table = _table(parts, variables, _class_fields(rows, options.by, classes), task)
+    table = _table(parts, variables, _class_fields(rows, options, classes), task)
     quantiles = tuple(quantile_name(share) for share in options.quantiles)
     by = tuple(table.column_names[len(_HEAD) : len(_HEAD) + len(options.by)])
     return Summary(table, by, variables, weights_name, quantiles)
@@ -312,12 +312,15 @@ def _direction_fields(values: FloatArray, grouping: _Grouping, period_deg: float
     return dict(zip(_DIRECTION, (found.mean_deg, found.resultant_length, found.rayleigh_p), strict=True))
 
 
-def _class_fields(rows: Rows, by: Sequence[str], classes: Classes) -> dict[str, pa.Array]:
+def _class_fields(rows: Rows, options: SummaryOptions, classes: Classes) -> dict[str, pa.Array]:
     """Values of the classes, with a null behind them for all rows together."""
-    fields = {}
-    for index, name in enumerate(by):
+    taken = {*_RESERVED, *map(quantile_name, options.quantiles)}
+    fields: dict[str, pa.Array] = {}
+    for index, name in enumerate(options.by):
         kind = whole(rows, name).type
-        field = f"{name}_class" if name in _RESERVED or name.startswith("nulls_") else name
+        field = name
+        while field in {*taken, *fields} or field.startswith("nulls_"):
+            field = f"class_{field}"
         fields[field] = pa.array([*(value[index] for value in classes.values), None], kind)
     return fields
 

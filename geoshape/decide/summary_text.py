@@ -172,7 +172,7 @@ def number_text(value: object, digits: int) -> str:
 
 
 def _nulls(record: Record) -> str:
-    """Number of nulls with their reasons, unless nothing is known of these."""
+    """Count nulls, with their reasons if anything is known of these."""
     by_reason = {name.removeprefix("nulls_"): count for name, count in record.items() if name.startswith("nulls_")}
     known = [f"{count} {name}" for name, count in by_reason.items() if count]
     text = number_text(record["nulls"], 1)
