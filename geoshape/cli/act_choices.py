@@ -105,13 +105,11 @@ def tell(summary: Any, manner: Manner, lines: Sequence[tuple[str, str]], tables:
         from geoshape.cli.terminal import message_console
 
         console = message_console()
-        console.print(_labelled(lines))
-        for table in tables:
-            console.print()
-            console.print(table)
+        ending = _written_lines(summary.written, verbose=manner.verbose)
         if tables:
-            console.print()
-        console.print(_labelled(_written_lines(summary.written, verbose=manner.verbose)))
+            console.print(_labelled(lines), *tables, _labelled(ending), sep="\n\n")
+        else:
+            console.print(_labelled([*lines, *ending]))
         _print_notes(console, (*getattr(summary, "notes", ()), *summary.written.warnings), verbose=manner.verbose)
 
 

@@ -20,6 +20,8 @@ _COMMANDS = {
     "group": "sort features into groups of alike shape, with a prototype of each",
     "compare": "compare two surveys of the same ground: what was kept, split, merged, lost, new",
     "summarise": "statistics by class or zone, mean directions included",
+    "redraw": "redraw outlines from their first harmonics",
+    "report": "one page that opens anywhere: map, table, close-ups, and how the numbers were made",
     "columns": "list the columns: name, unit, meaning, source",
 }
 
