@@ -26,7 +26,7 @@ from geoshape.ground.joint import JointPlan, on_plane, plan_joint_ground
 from geoshape.ground.place import Placed, open_ground
 from geoshape.layers.plan import LayerContent, OutputPlan
 from geoshape.layers.write import OutputBatch
-from geoshape.options import Source, Target
+from geoshape.options import MeasureOptions, Source, Target
 from geoshape.rings import FloatArray
 
 _COMPARE = "compare"
@@ -188,7 +188,7 @@ def compare_files(
     joint = plan_joint_ground(
         (before.crs, after.crs), (bounds_of([sides[0].geometries]), bounds_of([sides[1].geometries])), how.measure
     )
-    table, relations = compared(sides, joint, options, sources.min_share, how)
+    table, relations = compared(sides, joint, options, sources.min_share, how.measure)
     geometries = shown_geometries(sides, relations, (before.crs, after.crs))
     told = _lineage_options(sources, options, joint)
     written = after.write(plan, [_batch(table, geometries, plan)], _COMPARE, told, joint.warnings)
@@ -272,7 +272,7 @@ def _read(opened: Opened) -> Side:
 
 
 def compared(
-    sides: tuple[Side, Side], joint: JointPlan, options: CompareOptions, min_share: float, how: ActOptions
+    sides: tuple[Side, Side], joint: JointPlan, options: CompareOptions, min_share: float, measure: MeasureOptions
 ) -> tuple[pa.Table, Relations]:
     """Lay two surveys upon each other, pair their rows and compare them.
 
@@ -284,7 +284,7 @@ def compared(
     options : CompareOptions
         With its columns named; rows are paired by its key, by overlap where it has none.
     min_share : float
-    how : ActOptions
+    measure : MeasureOptions
 
     Returns
     -------
@@ -293,8 +293,8 @@ def compared(
     relations : Relations
     """
     before, after = sides
-    first, polygons_before = _on_plane(before, before.geometries, joint, how, is_second=False)
-    _, polygons_after = _on_plane(after, joint.shifted(after.geometries), joint, how, is_second=True)
+    first, polygons_before = _on_plane(before, before.geometries, joint, measure, is_second=False)
+    _, polygons_after = _on_plane(after, joint.shifted(after.geometries), joint, measure, is_second=True)
     surveys = Survey(before.table, polygons_before), Survey(after.table, polygons_after)
     if options.key is None:
         relations = pair_by_overlap(polygons_before, polygons_after, min_share=min_share)
@@ -305,10 +305,10 @@ def compared(
 
 
 def _on_plane(
-    side: Side, geometries: ObjectArray, joint: JointPlan, how: ActOptions, *, is_second: bool
+    side: Side, geometries: ObjectArray, joint: JointPlan, measure: MeasureOptions, *, is_second: bool
 ) -> tuple[Placed, ObjectArray]:
     plan = joint.second if is_second else joint.first
-    laid = lay(geometries, side.unreadable, open_ground(plan), how.measure)
+    laid = lay(geometries, side.unreadable, open_ground(plan), measure)
     return laid.placed, polygons_of(on_plane(laid.placed, plan))
 
 

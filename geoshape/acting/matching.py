@@ -186,7 +186,8 @@ def read_templates(templates: TemplateSource) -> tuple[Templates, tuple[str, ...
     info = open_layer(source.path, layer=source.layer, where=source.where, bbox=source.bbox)
     batches = list(read_batches(info))
     values = [value for batch in batches for value in batch.geometry.to_pylist()]
-    names = _names(pa.Table.from_batches([batch.attributes for batch in batches], info.schema), templates.names, values)
+    table = pa.Table.from_batches([batch.attributes for batch in batches], info.schema)
+    names = template_names(table, templates.names, len(values))
     crs = pyproj.CRS(info.crs_wkt) if info.crs_wkt else None
     notes = () if crs else (f"{source.path} has no CRS: templates are taken from its coordinates as they are",)
     options = MeasureOptions() if crs else MeasureOptions(ground=GROUND_PLANE)
@@ -195,9 +196,16 @@ def read_templates(templates: TemplateSource) -> tuple[Templates, tuple[str, ...
     return make_templates(names, lay(geometries, unreadable, ground, options).outlines()), notes
 
 
-def _names(table: pa.Table, column: str | None, values: Sequence[object]) -> list[str]:
+def template_names(table: pa.Table, column: str | None, n_rows: int) -> list[str]:
+    """Take the names of templates from a column, or number them from 1 where none is named.
+
+    Raises
+    ------
+    OptionError
+        The column is not there, or a name is null or empty.
+    """
     if column is None:
-        return [str(row) for row in range(1, len(values) + 1)]
+        return [str(row) for row in range(1, n_rows + 1)]
     require_columns([column], table.schema, "template names")
     names = whole(table, column).to_pylist()
     for row, name in enumerate(names, start=1):
