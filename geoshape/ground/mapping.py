@@ -9,11 +9,16 @@ import numpy as np
 import pyproj
 
 from geoshape.ground.plane import Centres, Ellipsoid, azimuthal, project
-from geoshape.ground.polar import FRAME_LAYER, FRAME_NORTH
+from geoshape.ground.polar import FRAME_LAYER, FRAME_LONLAT, FRAME_NORTH, FRAME_SOUTH
 from geoshape.rings import BoolArray, FloatArray, IntArray
 
 POLE_RADIUS_M = 1e-3
 """A centre as close to a pole as this is taken to be there, reached along the meridian of 0."""
+
+
+def is_polar(frames: IntArray) -> BoolArray:
+    """Tell which coordinates are metres on the plane of a pole."""
+    return np.isin(frames, (FRAME_NORTH, FRAME_SOUTH))
 
 
 @dataclass(frozen=True, eq=False)
@@ -47,17 +52,22 @@ class Globe:
         longitude, latitude : (n,) float64
             Infinite where the projection has no inverse.
         """
-        if self.inverse is not None:
-            longitude, latitude = self.inverse.transform(x, y)
-            return self.unit_deg * np.asarray(longitude), self.unit_deg * np.asarray(latitude)
         if not frames.any():
-            return x, y
+            return self._from_layer(x, y)
         longitude, latitude = x.copy(), y.copy()
-        polar = frames != FRAME_LAYER
+        layer = frames == FRAME_LAYER
+        longitude[layer], latitude[layer] = self._from_layer(x[layer], y[layer])
+        polar = is_polar(frames)
         at = self.from_pole(x[polar], y[polar], frames[polar])
         longitude[polar] = np.degrees(at.longitude_rad)
         latitude[polar] = np.degrees(self.ellipsoid.geographic_latitude(at.sine, at.cosine))
         return longitude, latitude
+
+    def _from_layer(self, x: FloatArray, y: FloatArray) -> tuple[FloatArray, FloatArray]:
+        if self.inverse is None:
+            return x, y
+        longitude, latitude = self.inverse.transform(x, y)
+        return self.unit_deg * np.asarray(longitude), self.unit_deg * np.asarray(latitude)
 
     def from_pole(self, x: FloatArray, y: FloatArray, frames: IntArray) -> SpherePoints:
         """Take places on the authalic sphere of points on a polar plane.
@@ -126,24 +136,29 @@ class CentredMap:
 
     def __call__(self, x: FloatArray, y: FloatArray, feature: IntArray) -> tuple[FloatArray, FloatArray]:
         """Map points given relative to the origins of their features."""
-        polar = self.frames[feature] != FRAME_LAYER if self.frames.any() else None
-        if polar is None:
+        if not self.frames.any():
             return self._from_layer(x, y, feature)
         mapped = np.empty((2, len(x)))
-        mapped[:, ~polar] = self._from_layer(x[~polar], y[~polar], feature[~polar])
-        mapped[:, polar] = self._from_pole(x[polar], y[polar], feature[polar])
+        frames = self.frames[feature]
+        for chosen, way in (
+            (frames == FRAME_LAYER, self._from_layer),
+            (frames == FRAME_LONLAT, self._from_lonlat),
+            (is_polar(frames), self._from_pole),
+        ):
+            mapped[:, chosen] = way(x[chosen], y[chosen], feature[chosen])
         return mapped[0], mapped[1]
 
     def _from_layer(self, x: FloatArray, y: FloatArray, feature: IntArray) -> tuple[FloatArray, FloatArray]:
         if self.globe.inverse is None:
-            # Coordinates that are near each other already: their differences keep all digits.
-            points, middle = (x, y), self.middle
-        else:
-            in_layer = np.zeros(len(x), dtype=np.int64)
-            points = self.globe.degrees(x + self.origin[feature, 0], y + self.origin[feature, 1], in_layer)
-            middle = self.centre_deg
+            return self._from_lonlat(x, y, feature)
+        in_layer = np.full(len(x), FRAME_LAYER)
+        lonlat = self.globe.degrees(x + self.origin[feature, 0], y + self.origin[feature, 1], in_layer)
         with np.errstate(invalid="ignore"):
-            return project(points, middle, feature, self._centres, self.globe.ellipsoid)
+            return project(lonlat, self.centre_deg, feature, self._centres, self.globe.ellipsoid)
+
+    def _from_lonlat(self, x: FloatArray, y: FloatArray, feature: IntArray) -> tuple[FloatArray, FloatArray]:
+        # Coordinates that are near each other already: their differences keep all digits.
+        return project((x, y), self.middle, feature, self._centres, self.globe.ellipsoid)
 
     def _from_pole(self, x: FloatArray, y: FloatArray, feature: IntArray) -> tuple[FloatArray, FloatArray]:
         x, y = x + self.origin[feature, 0], y + self.origin[feature, 1]

@@ -13,8 +13,10 @@ from numpy.typing import NDArray
 from geoshape.ground import edges, seams
 from geoshape.ground.crs_parts import angle_unit_deg, globe_of, length_unit_m, meridian_deg, to_lonlat, unfolded
 from geoshape.ground.equal_area import GroundKind, GroundPlan
-from geoshape.ground.mapping import CentredMap, Globe, SharedMap
+from geoshape.ground.mapping import CentredMap, Globe, SharedMap, is_polar
 from geoshape.ground.plane import distortion_deg
+from geoshape.ground.polar import FRAME_LAYER, FRAME_LONLAT
+from geoshape.ground.wide import unwrap_wide
 from geoshape.rings import BoolArray, FloatArray, IntArray, RingBatch, oriented
 
 ObjectArray = NDArray[np.object_]
@@ -25,9 +27,13 @@ SAMPLE_M, MIN_SAMPLES, MAX_SAMPLES = 5_000.0, 4, 64
 TORN = 0.02
 """Share of a feature's area by which a shared projection may miss it; beyond, the projection tears the feature."""
 
+FAR = 1.8
+"""Distance on a centred plane, in radii of the globe, beyond which a feature may hold the opposite of its centre."""
+
 MAX_LATITUDE_DEG = 90.0
 
 NO_PLACE = "coordinates lie outside what the layer's CRS can hold"
+NO_ROOM = "it reaches round the globe, where no plane can show it; split it into parts"
 NO_PLANE = "the ground's projection has no place for it, or tears it; use --ground centred"
 
 
@@ -115,11 +121,14 @@ class Ground:
         return np.asarray(shapely.transform(geometries, lambda points: points * factor))
 
     def unwrap(self, geometries: ObjectArray) -> tuple[ObjectArray, IntArray, BoolArray]:
-        """Make outlines whole that a seam of the globe tears; see `seams.unwrap`."""
-        if not self.plan.is_geographic:
-            n = len(geometries)
-            return geometries, np.zeros(n, dtype=np.int64), np.zeros(n, dtype=np.bool_)
-        return seams.unwrap(geometries, self._globe.ellipsoid, is_subdivided=self.plan.is_subdivided)
+        """Make outlines whole that a seam of the globe or the edge of a map tears; see `seams.unwrap`."""
+        is_subdivided = self.plan.is_subdivided
+        if self.plan.is_geographic:
+            return seams.unwrap(geometries, self._globe.ellipsoid, is_subdivided=is_subdivided)
+        if self._crs is not None and self._crs.is_projected and self.plan.kind is not GroundKind.PLANE:
+            return unwrap_wide(geometries, self._globe, length_unit_m(self._crs), is_subdivided=is_subdivided)
+        n = len(geometries)
+        return geometries, np.zeros(n, dtype=np.int64), np.zeros(n, dtype=np.bool_)
 
     def place(self, batch: RingBatch, frames: IntArray) -> Placed:
         """Put features on the plane.
@@ -164,11 +173,15 @@ class Ground:
 
     def _on_centred(self, batch: RingBatch, frames: IntArray) -> Placed:
         to_plane = self._centred_map(batch, frames)
-        placed, lost = _mapped(self._cut(batch, frames, to_plane), to_plane)
+        fine = self._cut(batch, frames, to_plane)
+        placed, lost = _mapped(fine, to_plane)
         lost |= self._is_beyond_pole(batch, frames)
-        distortion = distortion_deg(_reach(placed), self._globe.ellipsoid.authalic_radius_m)
-        faults = dict.fromkeys(np.flatnonzero(lost).tolist(), NO_PLACE)
-        return Placed(placed, np.zeros(batch.n_features), distortion, ~lost, to_plane.centre_deg, faults)
+        reach = _reach(placed)
+        torn = self._is_round_the_globe(fine, frames, placed, reach)
+        distortion = distortion_deg(reach, self._globe.ellipsoid.authalic_radius_m)
+        faults = dict.fromkeys(np.flatnonzero(torn).tolist(), NO_ROOM)
+        faults |= dict.fromkeys(np.flatnonzero(lost).tolist(), NO_PLACE)
+        return Placed(placed, np.zeros(batch.n_features), distortion, ~(lost | torn), to_plane.centre_deg, faults)
 
     def _on_shared(self, batch: RingBatch, frames: IntArray) -> Placed:
         centre = self._centres_deg(batch, frames)
@@ -196,7 +209,7 @@ class Ground:
     def _centred_map(self, batch: RingBatch, frames: IntArray) -> CentredMap:
         middle = batch.planar_centroid
         keeps_pole = np.zeros(batch.n_features, dtype=np.bool_)
-        polar = np.flatnonzero(frames != seams.FRAME_LAYER)
+        polar = np.flatnonzero(is_polar(frames))
         if len(polar):
             keeps_pole[polar] = (
                 _reach(batch, at_pole=True)[polar] > np.sqrt(2.0) * self._globe.ellipsoid.authalic_radius_m
@@ -211,25 +224,44 @@ class Ground:
 
     def _unit_m(self, frames: IntArray) -> FloatArray:
         """Take metres in a unit of each feature's coordinates, roughly: a degree is one of latitude."""
-        radius_m = self._globe.ellipsoid.semi_major_m
-        if self.plan.is_geographic:
-            return np.where(frames == seams.FRAME_LAYER, np.radians(radius_m), 1.0)
+        degree_m = np.radians(self._globe.ellipsoid.semi_major_m)
         crs = self._crs
-        unit = 1.0 if crs is None else length_unit_m(crs)
-        return np.full(len(frames), unit * radius_m if crs is not None and crs.is_geographic else unit)
+        if self.plan.is_geographic or crs is None:
+            own = degree_m
+        elif crs.is_geographic:
+            own = degree_m * angle_unit_deg(crs)
+        else:
+            own = length_unit_m(crs)
+        return np.select([is_polar(frames), frames == FRAME_LONLAT], [1.0, degree_m], own)
 
     def _is_beyond_pole(self, batch: RingBatch, frames: IntArray) -> BoolArray:
         beyond = np.zeros(batch.n_features, dtype=np.bool_)
-        if not self.plan.is_geographic or not batch.n_rings:
+        in_degrees = frames == (FRAME_LAYER if self.plan.is_geographic else FRAME_LONLAT)
+        if not batch.n_rings or not in_degrees.any():
             return beyond
         first = batch.ring_start[:-1]
         middle = batch.origin[batch.ring_feature, 1]
         highest = np.maximum(
             np.abs(np.maximum.reduceat(batch.y, first) + middle), np.abs(np.minimum.reduceat(batch.y, first) + middle)
         )
-        is_outside = (highest > MAX_LATITUDE_DEG) & (frames[batch.ring_feature] == seams.FRAME_LAYER)
+        is_outside = (highest > MAX_LATITUDE_DEG) & in_degrees[batch.ring_feature]
         beyond[batch.ring_feature[is_outside]] = True
         return beyond
+
+    def _is_round_the_globe(
+        self, batch: RingBatch, frames: IntArray, placed: RingBatch, reach_m: FloatArray
+    ) -> BoolArray:
+        """Tell which features hold the opposite of their centre: there the plane turns inside out."""
+        globe = self._globe.ellipsoid
+        far = (reach_m > FAR * globe.authalic_radius_m) & ~is_polar(frames)
+        if not far.any():
+            return far
+        some = batch.take_rings(far[batch.ring_feature])
+        turn = np.radians(some.next_x - some.x)
+        sine, _ = globe.authalic(np.radians(some.y + some.origin[some.vertex_feature, 1]))
+        area = globe.authalic_radius_m**2 * some.sum_features(-0.5 * turn * (sine + some.shift_back(sine)))
+        drawn = placed.sum_ring_values(placed.ring_signed_area)
+        return np.asarray(far & ~(np.abs(drawn - area) <= TORN * np.abs(area)))
 
     def _centres_deg(self, batch: RingBatch, frames: IntArray) -> FloatArray:
         middle = batch.origin + batch.planar_centroid

@@ -11,8 +11,8 @@ import shapely
 from geoshape.ground.plane import Ellipsoid
 from geoshape.rings import FloatArray
 
-FRAME_LAYER, FRAME_NORTH, FRAME_SOUTH = 0, 1, 2
-"""What coordinates of a feature are: the layer's own, or metres on the plane of a pole."""
+FRAME_LAYER, FRAME_NORTH, FRAME_SOUTH, FRAME_LONLAT = 0, 1, 2, 3
+"""What coordinates of a feature are: the layer's, metres on the plane of a pole, or, in a projected layer, degrees."""
 
 STEP_DEG = 0.05
 """Longest step in longitude and latitude of an outline on a polar plane: area and length to about 1e-7."""

@@ -22,6 +22,9 @@ ObjectArray = NDArray[np.object_]
 SNAP_DEG = 2e-5
 """How far from the antimeridian, about two metres, outlines are stored that were cut at it."""
 
+MAX_GAP_DEG = 0.01
+"""The same in degrees of longitude, next to the pole."""
+
 FULL_TURN_DEG = 1e-9
 """How much parts together may lack of a full turn and still go round the world."""
 
@@ -123,9 +126,18 @@ def _seam(geometry: shapely.Geometry) -> float | None:
     """Find the western longitude of the cut of a feature that reaches from one side of it to the other."""
     west, _, east, _ = shapely.bounds(geometry).tolist()
     seam = float(np.round(west))
-    if abs(west - seam) <= SNAP_DEG and abs(east - seam - _WHOLE) <= SNAP_DEG:
-        return seam
+    if abs(west - seam) <= MAX_GAP_DEG and abs(east - seam - _WHOLE) <= MAX_GAP_DEG:
+        points = shapely.get_coordinates(geometry)
+        if is_near(points, seam).any() and is_near(points, seam + _WHOLE).any():
+            return seam
     return float(west) if east - west == _WHOLE else None
+
+
+def is_near(points: Ring, longitude_deg: float) -> BoolArray:
+    """Tell which points lie within two metres of a meridian."""
+    # Near the pole a metre is many degrees.
+    off = np.minimum(np.abs(points[:, 0] - longitude_deg), MAX_GAP_DEG)
+    return np.asarray(off * np.cos(np.radians(points[:, 1])) <= SNAP_DEG) & (off < MAX_GAP_DEG)
 
 
 def _rings(part: shapely.Geometry) -> list[Ring]:
@@ -138,7 +150,7 @@ def _snapped(ring: Ring, seam: float | None) -> Ring:
         return ring
     longitude = ring[:, 0].copy()
     for side in (seam, seam + _WHOLE):
-        longitude[np.abs(longitude - side) <= SNAP_DEG] = side
+        longitude[is_near(ring, side)] = side
     return np.column_stack((longitude, ring[:, 1]))
 
 

@@ -8,7 +8,11 @@ import pyproj
 import pytest
 import shapely
 
-from tests.ground.layings import area_and_perimeter, placed_on
+from geoshape.geometry import ring_batch
+from geoshape.ground.equal_area import plan_ground
+from geoshape.ground.place import open_ground
+from geoshape.options import MeasureOptions
+from tests.ground.layings import area_and_perimeter, area_of, perimeter_of, place_all, placed_on
 
 WORLD = Path(__file__).parents[1] / "data" / "world_geodesic_area" / "world.gpkg"
 GEOD = pyproj.Geod(ellps="WGS84")
@@ -64,3 +68,34 @@ def test_a_layer_of_the_world_on_one_cylinder(countries):
         area = placed.batch.sum_ring_values(placed.batch.ring_signed_area)[0]
         assert area == pytest.approx(area_and_perimeter(countries[name])[0], rel=2e-6)
     assert not placed_on("EPSG:6933", countries["Antarctica"]).is_placed[0]
+
+
+@pytest.mark.parametrize("crs", ["EPSG:3857", "EPSG:6933", "EPSG:8857", "ESRI:54030", "ESRI:54009", "EPSG:3031"])
+def test_maps_of_the_world_are_cut_where_they_end(countries, crs):
+    # The same countries on a map whose ends, and whose pole, tear them as longitudes and latitudes do.
+    to_map = pyproj.Transformer.from_crs(4326, crs, always_xy=True)
+    names = ["Antarctica", "Russian Federation", "Canada", "New Zealand", "United States", "Kenya"]
+    degrees = [shapely.segmentize(countries[name], 0.5) for name in names]
+    drawn = [shapely.transform(shape, lambda p: np.column_stack(to_map.transform(*p.T))) for shape in degrees]
+    expected, got = place_all("centred", degrees), place_all("centred", drawn, crs)
+    assert got.is_placed.all(), got.faults
+    # Edges are straight on the map here and in degrees there, half a degree apart.
+    np.testing.assert_allclose(area_of(got), area_of(expected), rtol=5e-4)
+    np.testing.assert_allclose(perimeter_of(got), perimeter_of(expected), rtol=1e-3)
+
+
+def test_a_shape_off_the_map_is_left_to_be_refused():
+    ground = open_ground(plan_ground(pyproj.CRS("ESRI:54009"), None, MeasureOptions()))
+    shapes = np.array([shapely.box(-1.9e7, -8e6, 1.9e7, 8e6), shapely.box(0, 0, 1e5, 1e5)])
+    same, frames, _ = ground.unwrap(shapes)
+    assert same.tolist() == shapes.tolist()
+    assert not frames.any()
+    assert ground.place(ring_batch(same), frames).is_placed.tolist() == [False, True]
+
+
+def test_wide_shapes_with_edges_on_the_plane_keep_their_vertices():
+    shape = shapely.box(-3e6, 5e6, 3e6, 6e6)
+    four = placed_on("centred", shape, "EPSG:3857", edges="plane").batch
+    many = placed_on("centred", shape, "EPSG:3857").batch
+    assert four.n_vertices == 4
+    assert many.n_vertices > 600

@@ -322,6 +322,14 @@ class TestWhatHasNoPlace:
         assert placed.is_placed.tolist() == [False, True]
         assert placed.faults == {0: "coordinates lie outside what the layer's CRS can hold"}
 
+    def test_a_part_round_the_opposite_of_the_centre_is_not_placed(self):
+        here, opposite = [box(-40, 20, -10, 60), box(-100, 20, -75, 60)], box(126.5, -41.7, 132.5, -35.7)
+        placed = placed_on("centred", MultiPolygon([*here, opposite]))
+        assert placed.is_placed.tolist() == [False]
+        assert placed.faults == {0: "it reaches round the globe, where no plane can show it; split it into parts"}
+        beside = placed_on("centred", MultiPolygon([*here, box(100, -41, 106, -35)]))
+        assert beside.is_placed.tolist() == [True]
+
     def test_nothing_in_nothing_out(self):
         ground = open_ground(plan_ground(WGS84, None, MeasureOptions()))
         for geometries in (np.array([], dtype=object), np.array([None, Polygon()], dtype=object)):
