@@ -16,6 +16,7 @@ from geoshape.columns import RECORD, Column, Kind
 from geoshape.decide.flag import FLAG_COLUMNS
 from geoshape.errors import OptionError
 from geoshape.options import MeasureOptions
+from geoshape.report.statistics import ENDS, ends_and_middle
 from geoshape.rings import FloatArray, IntArray
 
 ObjectArray = NDArray[np.object_]
@@ -242,12 +243,28 @@ class View:
     def _numbers(self) -> dict[str, FloatArray]:
         return {}
 
+    def ends(self, name: str) -> tuple[IntArray, IntArray, IntArray]:
+        """Rows with the lowest, the most typical and the highest values of a column."""
+        if name not in self._ends:
+            self._ends[name] = ends_and_middle(self.numbers(name), ENDS)
+        return self._ends[name]
+
+    @cached_property
+    def _ends(self) -> dict[str, tuple[IntArray, IntArray, IntArray]]:
+        return {}
+
     def texts(self, name: str, rows: IntArray | None = None) -> list[str | None]:
-        """Values of a column as text, None where null."""
+        """Values of a column as text, None where null; those of all rows are kept."""
         values = self.data.table.column(name)
         if rows is not None:
-            values = values.take(pa.array(rows))
-        return [_as_text(value) for value in values.to_pylist()]
+            return [_as_text(value) for value in values.take(pa.array(rows)).to_pylist()]
+        if name not in self._texts:
+            self._texts[name] = [_as_text(value) for value in values.to_pylist()]
+        return self._texts[name]
+
+    @cached_property
+    def _texts(self) -> dict[str, list[str | None]]:
+        return {}
 
     def bare(self, bare: str) -> FloatArray | None:
         """(n,) float64 values of a registry column; None where the layer lacks it."""

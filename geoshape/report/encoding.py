@@ -18,6 +18,9 @@ FINEST = 1.0 / 1600.0
 
 COARSEST = 1.0 / 50.0
 
+CLOSED_TRIANGLE = 4
+"""Coordinates of the smallest closed ring."""
+
 
 def packed(values: NDArray[np.generic], kind: str) -> str:
     """Pack an array, row by row, as ``kind``: ``"<f8"``, ``"<f4"``, ``"<i2"`` or ``"<i4"``.
@@ -88,6 +91,15 @@ def extents(batch: RingBatch) -> FloatArray:
     return np.asarray((high - low).max(axis=1))
 
 
+def simplified_rings(rings: NDArray[np.object_], tolerance: FloatArray) -> NDArray[np.object_]:
+    """Simplify rings, with care only where the quick way leaves too little of one."""
+    coarse = np.asarray(shapely.simplify(rings, tolerance, preserve_topology=False))
+    lost = shapely.get_num_coordinates(coarse) < CLOSED_TRIANGLE
+    if lost.any():
+        coarse[lost] = shapely.simplify(rings[lost], tolerance[lost], preserve_topology=True)
+    return coarse
+
+
 def simplified(batch: RingBatch, screen: float, budget: int) -> RingBatch:
     """Simplify outlines to what a screen shows, and further until they keep to a budget.
 
@@ -112,7 +124,7 @@ def simplified(batch: RingBatch, screen: float, budget: int) -> RingBatch:
     share = FINEST
     while True:
         tolerance = np.minimum(share * own, max(FINEST * screen, share * screen / 8.0))
-        coarse = shapely.simplify(rings, tolerance, preserve_topology=True)
+        coarse = simplified_rings(np.asarray(rings), tolerance)
         if shapely.get_num_coordinates(coarse).sum() <= budget or share >= COARSEST:
             break
         share *= 2.0

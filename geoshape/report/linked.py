@@ -11,11 +11,13 @@ from bokeh.events import DocumentReady
 from bokeh.models import (
     BoxSelectTool,
     BoxZoomTool,
+    CDSView,
     ColumnDataSource,
     CustomJS,
     CustomJSTicker,
     CustomJSTickFormatter,
     HoverTool,
+    IndexFilter,
     LassoSelectTool,
     MultiPolygons,
     PanTool,
@@ -31,6 +33,7 @@ from bokeh.models import (
 )
 from bokeh.models.annotations.dimensional import Metric
 from bokeh.models.annotations.legends import ScaleBar
+from bokeh.models.renderers import DataRenderer, GlyphRenderer
 from bokeh.models.text import PlainText
 from bokeh.plotting import figure
 from bokeh.resources import Resources
@@ -40,7 +43,7 @@ from geoshape.report.placing import MapPlane
 
 FONT = "Gill Sans, Gill Sans MT, Calibri, Noto Sans, DejaVu Sans, sans-serif"
 
-_FILL_SHAPES = ("xs", "ys", "fill", "hatch", "px", "py", "label", "value")
+_FILL_SHAPES = ("xs", "ys", "fill", "px", "py", "label", "value")
 
 
 @dataclass(frozen=True)
@@ -94,6 +97,8 @@ def linked_figures(plane: MapPlane) -> LinkedFigures:
         "map": the_map,
         "histogram": the_histogram,
         "scatter": the_scatter,
+        "known": the_map.select_one({"name": "known", "type": GlyphRenderer}),
+        "unknown": the_map.select_one({"name": "unknown", "type": GlyphRenderer}),
     }
     document.js_on_event(DocumentReady, CustomJS(args=models, code=_START))
     script, (map_div, histogram_div, scatter_div) = components((the_map, the_histogram, the_scatter))
@@ -101,7 +106,7 @@ def linked_figures(plane: MapPlane) -> LinkedFigures:
     return LinkedFigures("\n".join(library), script, map_div, histogram_div, scatter_div)
 
 
-_START = "window.geoshapeReport.onReady({shapes, bars, chosenBars, map, histogram, scatter})"
+_START = "window.geoshapeReport.onReady({shapes, bars, chosenBars, map, histogram, scatter, known, unknown})"
 
 
 def _styled(**settings: Any) -> Plot:
@@ -130,24 +135,26 @@ def _map(shapes: ColumnDataSource, plane: MapPlane) -> Plot:
         y_axis_type=None,
     )
     plot.grid.visible = False
-    look: dict[str, Any] = {
-        "xs": "xs",
-        "ys": "ys",
-        "hatch_color": QUIET,
-        "hatch_weight": 1,
-        "hatch_scale": 7,
-        "hatch_pattern": "hatch",
-    }
-    glyph = MultiPolygons(**look, fill_color="fill", line_color=INK, line_width=0.5, line_alpha=0.75)
-    chosen = MultiPolygons(**look, fill_color="fill", line_color=SEAL, line_width=3)
-    faded = glyph.clone(fill_alpha=0.35, hatch_alpha=0.35, line_alpha=0.35)
-    renderer = plot.add_glyph(shapes, glyph, selection_glyph=chosen, nonselection_glyph=faded)
-    tap, pan, box = TapTool(renderers=[renderer]), PanTool(), BoxSelectTool(renderers=[renderer])
-    hover = HoverTool(renderers=[renderer], tooltips=[("", "@label"), ("", "@value")], visible=False)
+    # A pattern for each shape would take a canvas for each: shapes without a value are a renderer of their own.
+    renderers: list[DataRenderer] = []
+    for name, hatch in (("known", "blank"), ("unknown", "right_diagonal_line")):
+        look: dict[str, Any] = {"xs": "xs", "ys": "ys", "fill_color": "fill", "hatch_pattern": hatch}
+        look |= {"hatch_color": QUIET, "hatch_weight": 1, "hatch_scale": 7}
+        glyph = MultiPolygons(**look, line_color=INK, line_width=0.5, line_alpha=0.75)
+        chosen = MultiPolygons(**look, line_color=SEAL, line_width=3)
+        faded = MultiPolygons(
+            **look, line_color=INK, line_width=0.5, line_alpha=0.35, fill_alpha=0.35, hatch_alpha=0.35
+        )
+        view = CDSView(filter=IndexFilter(indices=[]), name=name)
+        renderers.append(
+            plot.add_glyph(shapes, glyph, view=view, selection_glyph=chosen, nonselection_glyph=faded, name=name)
+        )
+    tap, pan, box = TapTool(renderers=renderers), PanTool(), BoxSelectTool(renderers=renderers)
+    hover = HoverTool(renderers=renderers, tooltips=[("", "@label"), ("", "@value")], visible=False)
     plot.add_tools(
         pan,
         box,
-        LassoSelectTool(renderers=[renderer]),
+        LassoSelectTool(renderers=renderers),
         BoxZoomTool(match_aspect=True),
         WheelZoomTool(),
         ZoomInTool(),

@@ -13,9 +13,8 @@ from geoshape.report.encoding import extents, packed, packed_complex, packed_rin
 from geoshape.report.methods import family_title
 from geoshape.report.placing import CloseUps, MapPlane
 from geoshape.report.plates import map_column
-from geoshape.report.sampling import Sample, ends_and_middle
+from geoshape.report.sampling import Sample
 from geoshape.report.sentences import status_counts
-from geoshape.report.sheet import ENDS
 from geoshape.report.statistics import histogram, is_logarithmic, quantiles
 from geoshape.report.wording import formula_text, plain_name, unit_text
 from geoshape.rings import FloatArray, IntArray
@@ -117,7 +116,7 @@ def _field(view: View, field: Column, rows: IntArray) -> dict[str, Any]:
         "bins": {"start": counted.start, "step": counted.step, "counts": counted.counts.tolist()},
     }
     if field.family not in {ERROR, ATTRIBUTE}:
-        described["ends"] = [_on_page(found, rows) for found in ends_and_middle(values, ENDS)]
+        described["ends"] = [_on_page(found, rows) for found in view.ends(field.name)]
     return described
 
 

@@ -8,11 +8,9 @@ import numpy as np
 
 from geoshape.columns import Kind
 from geoshape.report.data import ATTRIBUTE, ERROR, View
+from geoshape.report.statistics import ENDS
 from geoshape.report.wording import count_text, whole_text
-from geoshape.rings import BoolArray, FloatArray, IntArray
-
-ENDS = 4
-"""Shapes kept at each end, and at the middle, of every measured column."""
+from geoshape.rings import BoolArray, IntArray
 
 FLAGGED_SHARE = 0.6
 """Share of the drawn rows that flagged shapes may take where not all of them fit."""
@@ -59,36 +57,6 @@ def is_flagged(view: View) -> BoolArray | None:
     return np.nan_to_num(view.numbers(name)) > 0
 
 
-def ends_and_middle(values: FloatArray, count: int) -> tuple[IntArray, IntArray, IntArray]:
-    """Find the rows with the lowest, the most typical and the highest values.
-
-    Parameters
-    ----------
-    values : (n,) float64
-        NaN is passed over.
-    count : int
-        Rows of each kind; fewer where there are not enough, and none is in two kinds.
-
-    Returns
-    -------
-    lowest, typical, highest : int64
-        Each ascending by value. Of equal values the earlier rows come first.
-
-    Examples
-    --------
-    >>> [rows.tolist() for rows in ends_and_middle(np.array([5.0, 1.0, np.nan, 3.0, 4.0, 2.0]), 1)]
-    [[1], [3], [0]]
-    """
-    order = np.argsort(values, kind="stable")[: np.count_nonzero(~np.isnan(values))]
-    count = min(count, max(len(order) // 3, 1))
-    middle = max((len(order) - count) // 2, 0)
-    high = max(len(order) - count, min(count, len(order)))
-    typical = order[middle : middle + count]
-    lowest, highest = order[:count], order[high:]
-    typical = typical[~np.isin(typical, np.concatenate((lowest, highest)))]
-    return lowest, typical, highest
-
-
 def choose_rows(view: View) -> Sample:
     """Choose at most ``options.max_rows`` rows.
 
@@ -129,7 +97,7 @@ def _extremes(view: View) -> IntArray:
     columns = [field for field in view.numeric if field.family not in {ERROR, ATTRIBUTE}]
     picks = []
     for field in columns:
-        lowest, typical, highest = ends_and_middle(view.numbers(field.name), ENDS)
+        lowest, typical, highest = view.ends(field.name)
         picks += [lowest, highest[::-1], typical]
     ranked = np.full((len(picks), ENDS), -1, dtype=np.int64)
     for place, rows in enumerate(picks):

@@ -8,9 +8,8 @@ import numpy as np
 import shapely
 
 from geoshape.report.data import View
-from geoshape.report.encoding import extents
+from geoshape.report.encoding import extents, simplified_rings
 from geoshape.report.placing import CloseUps
-from geoshape.report.sampling import ends_and_middle
 from geoshape.report.wording import count_text, formula_text, length_text, plain_name, unit_text, value_text
 from geoshape.rings import IntArray, RingBatch
 
@@ -20,7 +19,6 @@ HALF = 90
 COARSE = 1.0
 """Tolerance of simplification in the same units: a small outline is some 100 pixels wide."""
 
-ENDS = 3
 MEMBERS = 5
 MAX_GROUPS = 12
 
@@ -110,7 +108,7 @@ class Sheet:
         """Give the extremes and the typical of one column; all of them are on the page."""
         field = self.view.by_name[name]
         values = self.view.numbers(name)
-        kinds = zip(("lowest", "typical", "highest"), ends_and_middle(values, ENDS), strict=True)
+        kinds = zip(("lowest", "typical", "highest"), self.view.ends(name), strict=True)
         chosen = [(int(row), place) for place, rows in kinds for row in rows]
         captions = {row: value_text(float(values[row]), field, 3) for row, _ in chosen}
         title = plain_name(field, self.view.prefix)
@@ -221,8 +219,8 @@ def _ring_paths(outline: RingBatch, rings: IntArray, factor: float) -> list[str]
 
 def path_of(corners: np.ndarray, tolerance: float) -> str:
     """Write a closed ring as an SVG path of whole numbers, simplified; empty where nothing is left to see."""
-    ring = shapely.simplify(shapely.linearrings(corners), tolerance, preserve_topology=True)
-    points = np.rint(shapely.get_coordinates(ring)[:-1]).astype(np.int64)
+    rings = simplified_rings(np.asarray(shapely.linearrings(corners[None])), np.array([tolerance]))
+    points = np.rint(shapely.get_coordinates(rings)[:-1]).astype(np.int64)
     keep = np.any(points != np.roll(points, 1, axis=0), axis=1)
     points = points[keep]
     if len(points) < 3:

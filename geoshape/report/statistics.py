@@ -19,6 +19,9 @@ WIDE_RATIO = 50.0
 
 ROSE_BINS = 18
 
+ENDS = 3
+"""Shapes told of at each end, and at the middle, of a column."""
+
 WHISKER_REACH = 1.5
 """Whiskers end at the last value within so many interquartile ranges of the box (Tukey 1977)."""
 
@@ -40,6 +43,36 @@ def is_logarithmic(values: FloatArray, field: Column) -> bool:
         return False
     low, high = np.quantile(known, (0.025, 0.975))
     return bool(high / low > WIDE_RATIO)
+
+
+def ends_and_middle(values: FloatArray, count: int) -> tuple[IntArray, IntArray, IntArray]:
+    """Find the rows with the lowest, the most typical and the highest values.
+
+    Parameters
+    ----------
+    values : (n,) float64
+        NaN is passed over.
+    count : int
+        Rows of each kind; fewer where there are not enough, and none is in two kinds.
+
+    Returns
+    -------
+    lowest, typical, highest : int64
+        Each ascending by value. Of equal values the earlier rows come first.
+
+    Examples
+    --------
+    >>> [rows.tolist() for rows in ends_and_middle(np.array([5.0, 1.0, np.nan, 3.0, 4.0, 2.0]), 1)]
+    [[1], [3], [0]]
+    """
+    order = np.argsort(values, kind="stable")[: np.count_nonzero(~np.isnan(values))]
+    count = min(count, max(len(order) // 3, 1))
+    middle = max((len(order) - count) // 2, 0)
+    high = max(len(order) - count, min(count, len(order)))
+    typical = order[middle : middle + count]
+    lowest, highest = order[:count], order[high:]
+    typical = typical[~np.isin(typical, np.concatenate((lowest, highest)))]
+    return lowest, typical, highest
 
 
 def quantiles(values: FloatArray) -> FloatArray:

@@ -63,10 +63,12 @@ function colourMap() {
   drawLegend(field, spread);
   if (!models) return;
   const colours = coloursOf(field, spread);
+  const shapes = [...colours.keys()];
+  models.known.view.filter.indices = shapes.filter((shape) => colours[shape] !== null);
+  models.unknown.view.filter.indices = shapes.filter((shape) => colours[shape] === null);
   models.shapes.data = {
     ...models.shapes.data,
     fill: colours.map((colour) => colour ?? page.colours.null),
-    hatch: colours.map((colour) => (colour === null ? "right_diagonal_line" : "blank")),
     value: colours.map((_, shape) => `${field.title} ${textAt(field, shape)}`),
   };
 }
@@ -214,7 +216,7 @@ function onReady(given) {
   const outlines = mapOutlines();
   extent = extentOf(outlines.xs, outlines.ys);
   const empty = page.labels.map(() => NaN);
-  models.shapes.data = { ...outlines, fill: page.labels.map(() => page.colours.null), hatch: page.labels.map(() => "blank"), px: empty, py: empty, label: page.labels, value: page.labels };
+  models.shapes.data = { ...outlines, fill: page.labels.map(() => page.colours.null), px: empty, py: empty, label: page.labels, value: page.labels };
   colourMap();
   fitMap(false);
   for (const side of ["inner_width", "inner_height"]) {
