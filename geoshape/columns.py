@@ -273,10 +273,74 @@ def columns_for(options: MeasureOptions) -> tuple[Column, ...]:
     part_number = (_PART_NUMBER,) if options.parts is Parts.SPLIT else ()
     columns = list(_of_family(RECORD, (*_RECORD, *part_number)))
     for family in options.families:
-        columns += _of_family(family, _family_columns(family, options))
-    if not options.prefix:
+        own = family_columns(family, options)
+        columns += own
+        if options.position_error_m is not None:
+            columns += _error_columns(own)
+    if not options.prefix and options.position_error_m is None:
         return tuple(columns)
     return tuple(_prefixed(columns, options.prefix))
+
+
+def family_columns(family: Family, options: MeasureOptions) -> tuple[Column, ...]:
+    """List the columns of one family, without prefix and without those of errors."""
+    return _of_family(family, _family_columns(family, options))
+
+
+ERROR_SUFFIX = "_se"
+BIAS_SUFFIX = "_bias"
+
+_SHIFTED = frozenset(
+    {
+        "perimeter_m",
+        "outline_m",
+        "edge_mean_m",
+        "feret_max_m",
+        "feret_min_m",
+        "polsby_popper",
+        "perimeter_ratio",
+        "reock",
+        "convexity",
+        "rectangularity",
+    }
+)
+"""Columns whose mean shifts under errors of position: those of perimeter, and of a hull that errors push outwards."""
+
+
+def is_axial(column: Column) -> bool:
+    """Tell whether a column holds directions without a sense."""
+    return column.name.endswith("_azimuth_deg")
+
+
+def has_error(column: Column) -> bool:
+    """Tell whether a column has a standard error: every number that is measured."""
+    return column.kind is Kind.NUMBER
+
+
+def has_bias(column: Column) -> bool:
+    """Tell whether the mean of a column shifts under errors of position."""
+    return column.name in _SHIFTED or (column.family == Family.SPECTRUM and has_error(column))
+
+
+def _error_columns(columns: Iterable[Column]) -> Iterable[Column]:
+    for column in columns:
+        if has_error(column):
+            yield _derived(column, ERROR_SUFFIX, "se", f"standard error of {column.name} under the position error")
+        if has_bias(column):
+            shift = f"mean shift of {column.name} under the position error: take it off to correct"
+            yield _derived(column, BIAS_SUFFIX, "bi", shift)
+
+
+def _derived(column: Column, suffix: str, short_suffix: str, meaning: str) -> Column:
+    return replace(
+        column,
+        name=column.name + suffix,
+        short_name=column.short_name[: SHORT_NAME_LENGTH - len(short_suffix)] + short_suffix,
+        low=0.0 if suffix == ERROR_SUFFIX else None,
+        high=None,
+        meaning=meaning,
+        source="",
+    )
 
 
 def _family_columns(family: Family, options: MeasureOptions) -> tuple[Column, ...]:

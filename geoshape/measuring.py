@@ -14,7 +14,9 @@ import shapely
 from geoshape import geometry
 from geoshape.columns import Kind, Status, columns_for
 from geoshape.formulas.arclength import edge_lengths
-from geoshape.formulas.families import FAMILIES, Shapes
+from geoshape.formulas.digitising import KeyArray
+from geoshape.formulas.families import FAMILIES, Columns, Shapes
+from geoshape.formulas.position_error import error_columns, feature_keys
 from geoshape.geometry import ObjectArray, Verdicts
 from geoshape.ground.place import Ground, Placed
 from geoshape.ground.seams import rejoin
@@ -85,7 +87,8 @@ def measure_geometries(
         geometries, row, number = geometry.split(geometries)
         parts = geometries
         lost = {int(at): lost[source] for at, source in enumerate(row.tolist()) if source in lost}
-    values = _measure_rows(geometries, lost, ground, options, first_row)
+    key = feature_keys(options.seed, first_row + row, np.nan_to_num(number).astype(np.int64))
+    values = _measure_rows(geometries, lost, ground, options, first_row, key)
     values["part_number"] = number
     ordered = {}
     for column in columns_for(options):
@@ -96,7 +99,12 @@ def measure_geometries(
 
 
 def _measure_rows(
-    geometries: ObjectArray, unreadable: dict[int, str], ground: Ground, options: MeasureOptions, first_row: int
+    geometries: ObjectArray,
+    unreadable: dict[int, str],
+    ground: Ground,
+    options: MeasureOptions,
+    first_row: int,
+    key: KeyArray,
 ) -> dict[str, FloatArray | ObjectArray]:
     geometries = ground.in_degrees(geometries)
     polygons, verdicts = geometry.screen(geometries, unreadable, is_geographic=ground.plan.is_geographic)
@@ -118,10 +126,14 @@ def _measure_rows(
         "hole_count": counts.holes,
         "vertex_count": counts.vertices,
     }
+    numbers: Columns = {}
     with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
         # Rows without rings are null in every column; their quotients are no news.
         for family in options.families:
-            values |= FAMILIES[family](shapes, options)
+            numbers |= FAMILIES[family](shapes, options)
+        if options.position_error_m is not None:
+            numbers |= error_columns(shapes, numbers, key, options)
+    values |= numbers
     return values
 
 

@@ -207,6 +207,23 @@ measure_options = bundle(
     ),
     log_moments_option,
     prefix_option,
+    click.option(
+        "--position-error",
+        "position_error_m",
+        type=float,
+        metavar="METRES",
+        help="Standard deviation of each coordinate of a vertex: adds the standard error of every measured number.",
+    ),
+    click.option(
+        "--error-length",
+        "error_length_m",
+        type=float,
+        metavar="METRES",
+        show_default="each outline's median edge",
+        help="Distance along the outline over which errors are alike; 0 for independent errors.",
+    ),
+    click.option("--error-runs", type=int, default=64, show_default=True, help="Disturbed outlines to measure."),
+    click.option("--seed", type=int, default=0, show_default=True, help="The same seed gives the same errors."),
 )
 
 
