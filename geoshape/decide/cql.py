@@ -68,10 +68,7 @@ def evaluate(expression: Expression, rows: Rows) -> pa.BooleanArray:
     >>> evaluate(parse("depth_m > 2 OR zone = 'a'"), lakes).to_pylist()
     [True, None, True]
     """
-    result = _Evaluator(rows).values(expression)
-    if isinstance(result, pa.Scalar):
-        return pa.array([result.as_py()] * rows.num_rows, pa.bool_())
-    return result.cast(pa.bool_())
+    return _truth(_Evaluator(rows).values(expression))
 
 
 class _Evaluator:

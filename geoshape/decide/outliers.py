@@ -17,17 +17,14 @@ from geoshape.decide.tabular import Classes, ClassValue, Rows, classes_of, numbe
 from geoshape.errors import OptionError
 from geoshape.rings import BoolArray, FloatArray, IntArray
 
-DEFAULT_COLUMNS = (
-    "polsby_popper",
-    "reock",
-    "convexity",
-    "rectangularity",
-    "inertia_compactness",
-    "axis_ratio",
-    "fd_departure",
-    "fd_entropy",
-)
-"""What makes a shape unusual where nothing else is said: no column that depends on its size or place."""
+DEFAULT_COLUMNS = ("axis_ratio", "convexity", "polsby_popper")
+"""What makes a shape unusual where nothing else is said: stretch, dents and roughness, whatever size and place.
+
+Few, as each column more needs ten rows more in every class, and as columns that are functions of one another for simple
+shapes (all that measure compactness are, for rectangles) would make everything else unusual."""
+
+MANY = 0.1
+"""Share of unusual rows above which a note says that the limit means little."""
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -90,11 +87,11 @@ class UnusualFit:
 
     @property
     def notes(self) -> tuple[str, ...]:
-        """Lines that say which columns were left out, and which classes have no score."""
+        """Lines that say which columns were left out, which classes have no score, and where much is unusual."""
         return tuple(
             f"{self.label(value)}: {text}"
             for value, ordinary in self.classes.items()
-            for text in (*ordinary.dropped, ordinary.reason)
+            for text in (*ordinary.dropped, ordinary.reason, _much(ordinary))
             if text
         )
 
@@ -186,6 +183,13 @@ def score_unusual(rows: Rows, fit: UnusualFit) -> Scores:
         missing = members[np.isnan(distances)]
         _explain(scores, missing, _reasons(values[missing], fit.columns, ordinary))
     return scores
+
+
+def _much(ordinary: Ordinary) -> str:
+    if ordinary.n_unusual <= MANY * ordinary.n_rows:
+        return ""
+    found = f"{ordinary.n_unusual} of {ordinary.n_rows} lie beyond the limit, as the others are much alike"
+    return f"{found}; look at the largest scores first, or judge by other columns"
 
 
 def _explain(scores: Scores, members: IntArray, reasons: Sequence[str]) -> None:

@@ -145,9 +145,7 @@ def whole(rows: Rows, name: str) -> pa.Array:
     """
     column = rows.column(name)
     if isinstance(column, pa.ChunkedArray):
-        column = column.combine_chunks()
-        if isinstance(column, pa.ChunkedArray):  # some versions keep the wrapping of a column without chunks
-            column = pa.concat_arrays(column.chunks) if column.num_chunks else pa.array([], column.type)
+        column = pa.concat_arrays(column.chunks) if column.num_chunks else pa.array([], column.type)
     return column.dictionary_decode() if pa.types.is_dictionary(column.type) else column
 
 

@@ -327,6 +327,19 @@ def test_columns_that_conditions_cannot_compare_may_be_null():
     assert "holds list" in refusal("parts = 1", rows)
 
 
+def test_what_the_parser_says_without_a_place(monkeypatch):
+    def parse_text(text):
+        raise cql2.ParseError("out of\n  order")
+
+    monkeypatch.setattr(cql2, "parse_text", parse_text)
+    assert refusal("a = 1") == "the condition cannot be read: out of order"
+
+
+def test_two_long_integers_that_are_one_float():
+    found = [leaf.value for leaf in leaves(parse("a IN (-9007199254740993, 9007199254740992, 1e17)")) if leaf.at]
+    assert found == [-9007199254740993, 9007199254740992]
+
+
 # Places
 
 

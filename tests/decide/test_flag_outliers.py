@@ -44,20 +44,24 @@ def test_distances_are_those_of_scikit_learn():
     np.testing.assert_allclose(fitted(values).distances(values), expected.mahalanobis(values), rtol=1e-8)
 
 
-def test_reweighting_ends_at_the_rows_within_its_own_limit():
-    values = mixed(400, 4, seed=6)
-    distances = fitted(values).distances(values)
-    for n_support in range(len(values), 0, -1):
-        support = distances < distance_limit(0.975, 4, n_support)
-        if support.sum() == n_support:
+@pytest.mark.parametrize("seed", range(4))
+def test_rows_are_added_to_the_subset_of_scikit_learn(seed):
+    """Step by step, with scikit-learn's subset of least determinant and its classical estimator."""
+    values = mixed(60, 2, seed)
+    values = values / values.std(axis=0)
+    subset = MinCovDet(random_state=0, support_fraction=0.75).fit(values).raw_support_
+    share, limit = 0.75, stats.chi2.ppf(0.975, 2)
+    while True:
+        distances = EmpiricalCovariance().fit(values[subset]).mahalanobis(values) / consistency_factor(2, share)
+        grown = subset | (distances < limit)
+        if (grown == subset).all():
             break
-    factor = consistency_factor(4, 0.975)
-    expected = EmpiricalCovariance().fit(values[support]).mahalanobis(values) / factor
-    np.testing.assert_allclose(distances, expected, rtol=1e-8)
+        subset, share, limit = grown, 0.975, distance_limit(0.975, 2, int(grown.sum()))
+    np.testing.assert_allclose(fitted(values).distances(values), distances, rtol=1e-8)
 
 
 def test_large_samples_come_near_scikit_learn():
-    values = mixed(3000, 3, seed=7)
+    values = mixed(1400, 3, seed=7)
     expected = MinCovDet(random_state=0, support_fraction=0.75).fit(values).mahalanobis(values)
     np.testing.assert_allclose(fitted(values).distances(values), expected, rtol=0.05, atol=0.05)
 
@@ -281,10 +285,24 @@ def test_sizes_enter_as_logarithms():
 
 def test_default_columns_are_those_at_hand():
     values = mixed(60, 2, seed=20)
-    rows = pa.table({"convexity": values[:, 0], "depth": values[:, 1], "reock": values[:, 1]})
+    rows = pa.table({"polsby_popper": values[:, 0], "depth": values[:, 1], "axis_ratio": values[:, 1]})
     fit = fit_unusual(rows, UnusualOptions())
-    assert fit.columns == ("reock", "convexity")
+    assert fit.columns == ("axis_ratio", "polsby_popper")
     assert set(fit.columns) <= set(DEFAULT_COLUMNS)
+
+
+def test_a_peaked_middle_is_not_cut_off_bit_by_bit():
+    """Three quarters of the rows stay in the estimate, whatever their distribution."""
+    values = np.random.default_rng(22).standard_cauchy(size=(400, 2))
+    fit = fit_unusual(table_of(values), UnusualOptions(columns=("a", "b")))
+    ordinary = fit.classes[None]
+    # The mean squared distance of the rows that the covariance is taken from is the number of columns.
+    inner = np.sort(ordinary.distances(values))[:300]
+    assert inner.mean() <= 2
+    is_unusual = ordinary.distances(values) > ordinary.limit
+    assert ordinary.n_unusual == is_unusual.sum() < 0.35 * 400
+    found = f"all features: {is_unusual.sum()} of 400 lie beyond the limit, as the others are much alike"
+    assert fit.notes == (f"{found}; look at the largest scores first, or judge by other columns",)
 
 
 def test_fits_travel_between_processes():
