@@ -46,9 +46,9 @@ def ring_batch(geometries: ObjectArray, *, local_origin: bool = True) -> RingBat
     (2, 8, [[1.0, 1.0], [10.5, 1.0]])
     """
     geometries = np.atleast_1d(np.asarray(geometries, dtype=object))
-    parts, part_feature = shapely.get_parts(geometries, return_index=True)
+    parts, part_feature = _parts(geometries)
     keep = ~shapely.is_empty(parts)
-    parts, part_feature = parts[keep], part_feature[keep].astype(np.int64)
+    parts, part_feature = parts[keep], part_feature[keep]
     holes = shapely.get_num_interior_rings(parts).astype(np.int64)
     ring_part = np.repeat(np.arange(len(parts)), holes + 1)
     first_ring = np.cumsum(holes + 1) - (holes + 1)
@@ -72,6 +72,15 @@ def ring_batch(geometries: ObjectArray, *, local_origin: bool = True) -> RingBat
     if local_origin:
         batch = recentred(batch, _box_middle(batch))
     return oriented(without_repeats(batch))
+
+
+def _parts(geometries: ObjectArray) -> tuple[ObjectArray, IntArray]:
+    """List the parts of polygons, and the row that each belongs to; a polygon is its own part, not a copy."""
+    owner = np.repeat(np.arange(len(geometries)), shapely.get_num_geometries(geometries))
+    parts = geometries[owner]
+    is_multi = shapely.get_type_id(geometries) == MULTIPOLYGON
+    parts[is_multi[owner]] = shapely.get_parts(geometries[is_multi])
+    return parts, owner
 
 
 def _closed_ring_sizes(parts: ObjectArray, holes: IntArray, ring_part: IntArray) -> IntArray:
@@ -236,6 +245,12 @@ def screen(geometries: ObjectArray, unreadable: dict[int, str], *, is_geographic
 
 def _mark_coordinates(polygons: ObjectArray, verdicts: Verdicts, *, is_geographic: bool) -> None:
     rows = np.flatnonzero(verdicts.is_measured())
+    coordinates = shapely.get_coordinates(polygons[rows])
+    # Nothing is wrong with most batches: NaN and infinity show in the extremes, and fail the comparison.
+    low, high = (coordinates.min(axis=0), coordinates.max(axis=0)) if len(coordinates) else (0.0, 0.0)
+    limit = np.array([np.finfo(np.float64).max, MAX_LATITUDE_DEG if is_geographic else np.finfo(np.float64).max])
+    if ((low >= -limit) & (high <= limit)).all():
+        return
     coordinates, owner = shapely.get_coordinates(polygons[rows], return_index=True)
     finite = np.isfinite(coordinates).all(axis=1)
     if not finite.all():
@@ -277,7 +292,7 @@ def count(polygons: ObjectArray, geometries: ObjectArray) -> Counts:
     Counts
     """
     n = len(polygons)
-    parts, owner = shapely.get_parts(polygons, return_index=True)
+    parts, owner = _parts(polygons)
     holes = shapely.get_num_interior_rings(parts)
     rings = np.where(shapely.is_empty(parts), 0, holes + 1)
     vertices = shapely.get_num_coordinates(polygons) - np.bincount(owner, weights=rings, minlength=n)

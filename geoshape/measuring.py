@@ -117,7 +117,9 @@ def _measure_rows(
     placed = ground.place(source, frames)
     batch = _without_area(source, placed, verdicts)
     measured = verdicts.is_measured()
-    shapes = Shapes(batch, placed.convergence_deg, _edge_count(source))
+    # Seams add vertices of their own: there the edges are those that were read.
+    edges = np.where(is_cut | (frames != 0), np.nan_to_num(counts.vertices), _edge_count(source)).astype(np.int64)
+    shapes = Shapes(batch, placed.convergence_deg, edges)
     values: dict[str, FloatArray | ObjectArray] = {
         "shape_status": np.array([str(status) for status in verdicts.status], dtype=object),
         "shape_note": np.array([verdicts.notes.get(at) for at in range(len(polygons))], dtype=object),
@@ -147,7 +149,8 @@ def _without_area(source: RingBatch, placed: Placed, verdicts: Verdicts) -> Ring
     batch = placed.batch
     has_rings = np.bincount(source.ring_feature, minlength=source.n_features) > 0
     lost = expected & has_rings & ~placed.is_placed
-    verdicts.mark(np.flatnonzero(lost), Status.INVALID, "coordinates lie outside what the layer's CRS can hold")
+    rows = np.flatnonzero(lost)
+    verdicts.mark(rows, Status.INVALID, [placed.faults[row] for row in rows.tolist()])
     flat = expected & ~lost & ~_has_area(batch)
     verdicts.mark(np.flatnonzero(flat), Status.COLLAPSED, "no area")
     keep = expected & ~lost & ~flat
