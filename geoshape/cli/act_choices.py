@@ -106,10 +106,15 @@ def tell(summary: Any, manner: Manner, lines: Sequence[tuple[str, str]], tables:
 
         console = message_console()
         ending = _written_lines(summary.written, verbose=manner.verbose)
-        if tables:
-            console.print(_labelled(lines), *tables, _labelled(ending), sep="\n\n")
-        else:
+        if not tables:
             console.print(_labelled([*lines, *ending]))
+        else:
+            console.print(_labelled(lines))
+            for table in tables:
+                console.print()
+                console.print(table)
+            console.print()
+            console.print(_labelled(ending))
         _print_notes(console, (*getattr(summary, "notes", ()), *summary.written.warnings), verbose=manner.verbose)
 
 
