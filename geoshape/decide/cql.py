@@ -68,7 +68,9 @@ def evaluate(expression: Expression, rows: Rows) -> pa.BooleanArray:
     >>> evaluate(parse("depth_m > 2 OR zone = 'a'"), lakes).to_pylist()
     [True, None, True]
     """
-    return _truth(_Evaluator(rows).values(expression))
+    result = _truth(_Evaluator(rows).values(expression))
+    # Without a column there is one answer for all rows.
+    return pa.repeat(result, rows.num_rows) if isinstance(result, pa.Scalar) else result
 
 
 class _Evaluator:

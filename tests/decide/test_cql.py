@@ -483,7 +483,7 @@ def table_of(rows):
     return pa.table({name: pa.array([row[i] for row in rows], kind) for i, (name, kind) in enumerate(kinds.items())})
 
 
-@settings(derandomize=True, deadline=None, max_examples=80)
+@settings(derandomize=True, deadline=None, max_examples=60)
 @given(conditions(), ROWS)
 def test_conditions_answer_as_row_by_row(condition, rows):
     text, expected = condition
