@@ -63,7 +63,10 @@ def error_columns(shapes: Shapes, undisturbed: Columns, key: KeyArray, options: 
     the undisturbed value. To have a value freed from what digitising added, take the bias from it. Directions have no
     bias; their standard error is the circular standard deviation sqrt(-2 ln R) of the doubled angle, halved (Mardia &
     Jupp 2000, Directional Statistics, sec. 2.3). Runs whose outline crosses itself are measured by the same formulas,
-    with signed area.
+    with signed area; hulls, circles and rectangles of such a run may come out too small.
+
+    Errors are put on the outline as digitised, which has its own already. Where these turn edges about as much as the
+    outline itself turns from edge to edge, standard errors of perimeter-based columns come out too wide.
     """
     if options.position_error_m is None:
         raise ValueError("error columns need position_error_m")
