@@ -33,11 +33,14 @@ class Shapes:
         What must be added to an azimuth on the plane to have it from true north.
     edge_count : (n_features,) int64
         Edges of the source outline, before any were subdivided.
+    is_simple : bool
+        Whether no ring crosses itself; hulls are quicker then.
     """
 
     batch: RingBatch
     convergence_deg: FloatArray
     edge_count: IntArray
+    is_simple: bool = True
 
     @cached_property
     def edge_length(self) -> FloatArray:
@@ -97,7 +100,7 @@ class Shapes:
     @cached_property
     def hulls(self) -> RingBatch:
         """Convex hull of each feature."""
-        return hulls.convex_hulls(self.batch)
+        return hulls.convex_hulls(self.batch) if self.is_simple else hulls.point_hulls(self.batch)
 
     @cached_property
     def hull_area(self) -> FloatArray:

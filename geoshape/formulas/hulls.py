@@ -150,30 +150,55 @@ def _outside_of_extremes(rings: RingBatch) -> tuple[IntArray, BoolArray]:
     return index, is_extreme[index]
 
 
+def point_hulls(batch: RingBatch) -> RingBatch:
+    """Take the convex hull of each feature's vertices, whatever way its rings go.
+
+    Slower than `convex_hulls`, and right where rings cross themselves.
+
+    Parameters
+    ----------
+    batch : RingBatch
+
+    Returns
+    -------
+    RingBatch
+        At most one ring a feature, counter-clockwise.
+    """
+    exteriors = batch.take_rings(~batch.ring_is_hole)
+    index = _point_hulls(exteriors.x, exteriors.y, exteriors.vertex_feature)
+    return _one_ring_each(exteriors, index)
+
+
 def _merged(hulls: RingBatch, rings_per_feature: IntArray) -> RingBatch:
     """Replace the hulls of the parts of a feature by the hull of them all."""
     several = rings_per_feature[hulls.vertex_feature] > 1
     index = np.flatnonzero(several)
     merged = index[_point_hulls(hulls.x[index], hulls.y[index], hulls.vertex_feature[index])]
-    rest = np.flatnonzero(~several)
-    feature = np.concatenate((hulls.vertex_feature[rest], hulls.vertex_feature[merged]))
-    index = np.concatenate((rest, merged))[np.argsort(feature, kind="stable")]
-    size = np.bincount(feature, minlength=hulls.n_features)
+    return _one_ring_each(hulls, np.concatenate((np.flatnonzero(~several), merged)))
+
+
+def _one_ring_each(batch: RingBatch, index: IntArray) -> RingBatch:
+    """Make one ring of each feature's chosen vertices, in the order given."""
+    feature = batch.vertex_feature[index]
+    index = index[np.argsort(feature, kind="stable")]
+    size = np.bincount(feature, minlength=batch.n_features)
     owner = np.flatnonzero(size)
     return RingBatch(
-        x=hulls.x[index],
-        y=hulls.y[index],
+        x=batch.x[index],
+        y=batch.y[index],
         ring_start=np.concatenate(([0], np.cumsum(size[owner]))),
         ring_part=np.arange(len(owner)),
         ring_is_hole=np.zeros(len(owner), dtype=np.bool_),
         part_feature=owner,
-        n_features=hulls.n_features,
-        origin=hulls.origin,
+        n_features=batch.n_features,
+        origin=batch.origin,
     )
 
 
 def _point_hulls(x: FloatArray, y: FloatArray, group: IntArray) -> IntArray:
     """Find the hulls of groups of points: indices, group by group, counter-clockwise."""
+    if not len(x):
+        return np.zeros(0, dtype=np.int64)
     order = np.lexsort((y, x, group))
     # Parts may share a corner, and equal points would each look like no turn at the other.
     again = (x[order[1:]] == x[order[:-1]]) & (y[order[1:]] == y[order[:-1]]) & (group[order[1:]] == group[order[:-1]])

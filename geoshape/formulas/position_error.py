@@ -97,6 +97,8 @@ def _disturbed_copies(shapes: Shapes, key: KeyArray, runs: IntArray, error: Posi
         disturbed(_copies(shapes.batch, n), by_copy, run_key),
         np.tile(shapes.convergence_deg, n),
         np.tile(shapes.edge_count, n),
+        # A large error lets outlines cross themselves.
+        is_simple=False,
     )
 
 
