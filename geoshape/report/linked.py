@@ -43,7 +43,7 @@ from geoshape.report.placing import MapPlane
 
 FONT = "Gill Sans, Gill Sans MT, Calibri, Noto Sans, DejaVu Sans, sans-serif"
 
-_FILL_SHAPES = ("xs", "ys", "fill", "px", "py", "label", "value")
+_FILL_SHAPES = ("xs", "ys", "cx", "cy", "fill", "px", "py", "label", "value")
 
 
 @dataclass(frozen=True)
@@ -99,6 +99,7 @@ def linked_figures(plane: MapPlane) -> LinkedFigures:
         "scatter": the_scatter,
         "known": the_map.select_one({"name": "known", "type": GlyphRenderer}),
         "unknown": the_map.select_one({"name": "unknown", "type": GlyphRenderer}),
+        "dots": the_map.select_one({"name": "dots", "type": GlyphRenderer}),
     }
     document.js_on_event(DocumentReady, CustomJS(args=models, code=_START))
     script, (map_div, histogram_div, scatter_div) = components((the_map, the_histogram, the_scatter))
@@ -106,7 +107,7 @@ def linked_figures(plane: MapPlane) -> LinkedFigures:
     return LinkedFigures("\n".join(library), script, map_div, histogram_div, scatter_div)
 
 
-_START = "window.geoshapeReport.onReady({shapes, bars, chosenBars, map, histogram, scatter, known, unknown})"
+_START = "window.geoshapeReport.onReady({shapes, bars, chosenBars, map, histogram, scatter, known, unknown, dots})"
 
 
 def _styled(**settings: Any) -> Plot:
@@ -145,10 +146,11 @@ def _map(shapes: ColumnDataSource, plane: MapPlane) -> Plot:
         faded = MultiPolygons(
             **look, line_color=INK, line_width=0.5, line_alpha=0.35, fill_alpha=0.35, hatch_alpha=0.35
         )
-        view = CDSView(filter=IndexFilter(indices=[]), name=name)
+        view = CDSView(filter=IndexFilter(indices=[]))
         renderers.append(
             plot.add_glyph(shapes, glyph, view=view, selection_glyph=chosen, nonselection_glyph=faded, name=name)
         )
+    renderers.append(_dots(plot, shapes))
     tap, pan, box = TapTool(renderers=renderers), PanTool(), BoxSelectTool(renderers=renderers)
     hover = HoverTool(renderers=renderers, tooltips=[("", "@label"), ("", "@value")], visible=False)
     plot.add_tools(
@@ -168,6 +170,19 @@ def _map(shapes: ColumnDataSource, plane: MapPlane) -> Plot:
     plot.toolbar.active_tap = tap
     plot.add_layout(_scale_bar(plot, plane))
     return plot
+
+
+def _dots(plot: Plot, shapes: ColumnDataSource) -> GlyphRenderer[Any]:
+    """Show the shapes that are too small for a colour, for as long as the view leaves them so."""
+    dot: dict[str, Any] = {"x": "cx", "y": "cy", "fill_color": "fill"}
+    return plot.add_glyph(
+        shapes,
+        Scatter(**dot, size=5, line_color=None),
+        view=CDSView(filter=IndexFilter(indices=[])),
+        selection_glyph=Scatter(**dot, size=11, line_color=SEAL, line_width=3),
+        nonselection_glyph=Scatter(**dot, size=5, line_color=None, fill_alpha=0.4),
+        name="dots",
+    )
 
 
 def _scale_bar(plot: Plot, plane: MapPlane) -> ScaleBar:

@@ -31,7 +31,7 @@ FINDING_HALF = 360
 WIDE_RATIO = 1.5
 """Width over height from which the map takes the whole width of the page."""
 
-PRINTED_ROWS = 150
+PRINTED_ROWS = 100
 PRINTED_COLUMNS = 7
 
 SCRIPTS = ("values", "selection", "figures", "table", "closeup", "sheet")
@@ -82,7 +82,7 @@ def build_report(data: ReportData, options: ReportOptions | None = None) -> str:
         if len(page.encode()) <= MAX_PAGE_BYTES or options.max_rows == 1:
             return page
         shown = min(options.max_rows, data.n_rows)
-        options = replace(options, max_rows=max(shown // 2, 1))
+        options = replace(options, max_rows=max(2 * shown // 3, 1))
 
 
 def _page(view: View) -> str:

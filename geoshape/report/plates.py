@@ -24,7 +24,7 @@ from geoshape.report.statistics import (
     nice_ticks,
     rose_counts,
 )
-from geoshape.report.wording import number_text, plain_name, unit_text
+from geoshape.report.wording import bar_text, number_text, plain_name, tick_text, unit_text
 from geoshape.rings import BoolArray, FloatArray, IntArray, RingBatch
 
 MAP_WIDTH = 1000.0
@@ -82,7 +82,7 @@ class Scale:
         """Choose ticks."""
         values = log_ticks(self.low, self.high) if self.is_log else nice_ticks(self.low, self.high, 5)
         places = self.place(np.array(values, dtype=np.float64))
-        return tuple(Tick(round(float(at), 1), number_text(value, 3)) for at, value in zip(places, values, strict=True))
+        return tuple(Tick(round(float(at), 1), tick_text(value)) for at, value in zip(places, values, strict=True))
 
 
 def scale_of(values: FloatArray, field: Column, width: float) -> Scale | None:
@@ -338,7 +338,7 @@ def printed_map(view: View, plane: MapPlane, rows: IntArray) -> PrintedMap | Non
         height=round(span_y * factor, 1),
         patches=tuple((path, colour or "") for path, colour in zip(paths, colours, strict=True) if path),
         bar=round(bar_m * factor, 1),
-        bar_text=_bar_text(bar_m, plane.unit),
+        bar_text=bar_text(bar_m, plane.unit),
         title=title,
         is_north_up=plane.is_north_up,
         legend=legend,
@@ -353,12 +353,6 @@ def _map_paths(batch: RingBatch, corners: FloatArray) -> list[str]:
         speck = "" if paths[feature] else f"M{own[0, 0]:.0f},{own[0, 1]:.0f}h2v2h-2z"
         paths[feature] += path_of(own, 0.5) or speck
     return paths
-
-
-def _bar_text(length: float, unit: str) -> str:
-    if unit == "m" and length >= 1000:
-        return f"{number_text(length / 1000)} km"
-    return f"{number_text(length)} {unit}"
 
 
 def _coloured(view: View, rows: IntArray) -> tuple[list[str | None], Legend, str]:

@@ -12,8 +12,11 @@ from geoshape.report.statistics import ENDS
 from geoshape.report.wording import count_text, whole_text
 from geoshape.rings import BoolArray, IntArray
 
-FLAGGED_SHARE = 0.6
-"""Share of the drawn rows that flagged shapes may take where not all of them fit."""
+GROWTH = 1.5
+"""How far the choice may grow beyond the rows asked for, so that it holds all flagged shapes."""
+
+REST_SHARE = 0.1
+"""Share of the rows asked for that is left to chance in any case."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -58,7 +61,7 @@ def is_flagged(view: View) -> BoolArray | None:
 
 
 def choose_rows(view: View) -> Sample:
-    """Choose at most ``options.max_rows`` rows.
+    """Choose about ``options.max_rows`` rows; up to half as many again where flagged shapes ask for it.
 
     Parameters
     ----------
@@ -81,10 +84,12 @@ def choose_rows(view: View) -> Sample:
     chosen = np.zeros(n, dtype=np.bool_)
     chosen[extremes] = True
     if flagged is not None:
-        chosen[_most_flagged(view, flagged & ~chosen, int(FLAGGED_SHARE * most))[: most - len(extremes)]] = True
+        room = int((GROWTH - REST_SHARE) * most) - len(extremes)
+        chosen[_most_flagged(view, flagged & ~chosen, room)] = True
     rest = np.flatnonzero(~chosen)
+    left = max(most - int(np.count_nonzero(chosen)), min(int(REST_SHARE * most), len(rest)))
     generator = np.random.default_rng(view.options.seed)
-    chosen[generator.choice(rest, size=most - np.count_nonzero(chosen), replace=False)] = True
+    chosen[generator.choice(rest, size=left, replace=False)] = True
     kept = 0 if flagged is None else int(np.count_nonzero(flagged & chosen))
     rows = np.flatnonzero(chosen)
     return Sample(
@@ -122,8 +127,8 @@ def _most_flagged(view: View, flagged: BoolArray, most: int) -> IntArray:
     rows = np.flatnonzero(flagged)
     score = view.bare("flag_score")
     if score is None:
-        return rows[:most]
-    return rows[np.argsort(-np.nan_to_num(score[rows], nan=-np.inf), kind="stable")][:most]
+        return rows[: max(most, 0)]
+    return rows[np.argsort(-np.nan_to_num(score[rows], nan=-np.inf), kind="stable")][: max(most, 0)]
 
 
 def _statement(view: View, chosen: int, extremes: int, flagged: tuple[int, int]) -> str:

@@ -106,6 +106,25 @@ def number_text(value: float, digits: int = 4) -> str:
     return text.replace(",", NARROW_SPACE).replace("-", MINUS)
 
 
+def tick_text(value: float) -> str:
+    """Write a number for an axis, large ones as powers of ten.
+
+    Examples
+    --------
+    >>> tick_text(2500.0), tick_text(1e8), tick_text(2e6)
+    ('2\u202f500', '10\u2078', '2\u00d710\u2076')
+    """
+    if not 1e6 <= abs(value) < 1e15:
+        return number_text(value, 3)
+    power = math.floor(math.log10(abs(value)))
+    mantissa = number_text(value / 10.0**power, 3)
+    raised = "10" + str(power).translate(_SUPERSCRIPTS)
+    return raised if mantissa == "1" else f"{mantissa}\u00d7{raised}"
+
+
+_SUPERSCRIPTS = str.maketrans("0123456789", "\u2070\u00b9\u00b2\u00b3\u2074\u2075\u2076\u2077\u2078\u2079")
+
+
 def value_text(value: float, column: Column, digits: int = 4) -> str:
     """Write a value with its unit.
 
@@ -191,6 +210,19 @@ def length_text(length_m: float) -> str:
     ('250 m', '12.5 km')
     """
     return f"{number_text(length_m, 3)} m" if length_m < 1e4 else f"{number_text(length_m / 1e3, 3)} km"
+
+
+def bar_text(length: float, unit: str) -> str:
+    """Write the length of a scale bar.
+
+    Examples
+    --------
+    >>> bar_text(5000.0, "m"), bar_text(200.0, "units")
+    ('5 km', '200 units')
+    """
+    if unit == "m" and length >= 1000.0:
+        return f"{number_text(length / 1000.0)} km"
+    return f"{number_text(length)} {unit}"
 
 
 def compass(azimuth_deg: float) -> str:

@@ -3,13 +3,34 @@
 const axes = { histogram: { x: null, y: null }, scatter: { x: null, y: null } };
 let models = null;
 let isFollowing = false;
+let extent = [Infinity, -Infinity, Infinity, -Infinity];
+
+// Shapes smaller than this on the screen are shown as dots, else their colour would drown in their outline.
+const DOT_PIXELS = 5;
+let sizes = null;
+
+function boxOf(rings) {
+  let [west, east, south, north] = [Infinity, -Infinity, Infinity, -Infinity];
+  for (const { x, y } of rings) {
+    for (const v of x) { if (v < west) west = v; if (v > east) east = v; }
+    for (const v of y) { if (v < south) south = v; if (v > north) north = v; }
+  }
+  return [west, east, south, north];
+}
 
 function mapOutlines() {
   const ringsOf = unpackRings(page.map.outline);
-  const xs = [], ys = [];
+  const xs = [], ys = [], cx = [], cy = [];
+  sizes = new Float64Array(page.count);
   for (let shape = 0; shape < page.count; shape++) {
     const shapeX = [], shapeY = [];
-    for (const ring of ringsOf(shape)) {
+    const rings = ringsOf(shape);
+    const [west, east, south, north] = boxOf(rings);
+    cx.push(rings.length ? (west + east) / 2 : NaN);
+    cy.push(rings.length ? (south + north) / 2 : NaN);
+    sizes[shape] = rings.length ? Math.max(east - west, north - south) : Infinity;
+    if (rings.length) extent = [Math.min(extent[0], west), Math.max(extent[1], east), Math.min(extent[2], south), Math.max(extent[3], north)];
+    for (const ring of rings) {
       if (!ring.isHole) { shapeX.push([]); shapeY.push([]); }
       shapeX[shapeX.length - 1].push(ring.x);
       shapeY[shapeY.length - 1].push(ring.y);
@@ -17,7 +38,7 @@ function mapOutlines() {
     xs.push(shapeX);
     ys.push(shapeY);
   }
-  return { xs, ys };
+  return { xs, ys, cx, cy };
 }
 
 // Place of a value between 0 and 1 among the column's quantiles.
@@ -124,14 +145,18 @@ function fitMap(keepsView) {
 }
 
 const SCALE_BAR_ROOM = 64;
-let extent = [0, 1, 0, 1];
+let waiting = null;
 
-function extentOf(xs, ys) {
-  const flat = (nested) => nested.flat(2);
-  let [west, east, south, north] = [Infinity, -Infinity, Infinity, -Infinity];
-  for (const x of flat(xs)) for (const v of x) { if (v < west) west = v; if (v > east) east = v; }
-  for (const y of flat(ys)) for (const v of y) { if (v < south) south = v; if (v > north) north = v; }
-  return west < east || south < north ? [west, east, south, north] : [0, 1, 0, 1];
+function drawDots() {
+  const each = (models.map.x_range.end - models.map.x_range.start) / models.map.inner_width;
+  const small = [...sizes.keys()].filter((shape) => sizes[shape] < DOT_PIXELS * each);
+  const before = models.dots.view.filter.indices;
+  if (small.length !== before.length || small.some((shape, i) => shape !== before[i])) models.dots.view.filter.indices = small;
+}
+
+function drawDotsSoon() {
+  clearTimeout(waiting);
+  waiting = setTimeout(drawDots, 120);
 }
 
 function setAxis(plot, side, title, low, high, isLog) {
@@ -208,13 +233,17 @@ function ticks(plot, side, range) {
 }
 
 function tickText(plot, side, tick) {
-  return numberText(axes[plot][side]?.isLog ? 10 ** tick : tick, 3);
+  const value = axes[plot][side]?.isLog ? 10 ** tick : tick, size = Math.abs(value);
+  if (size < 1e6 || size >= 1e15) return numberText(value, 3);
+  const power = Math.floor(Math.log10(size) + 1e-9), mantissa = numberText(value / 10 ** power, 3);
+  const raised = "10" + [...String(power)].map((digit) => "\u2070\u00b9\u00b2\u00b3\u2074\u2075\u2076\u2077\u2078\u2079"[digit]).join("");
+  return mantissa === "1" ? raised : `${mantissa}\u00d7${raised}`;
 }
 
 function onReady(given) {
   models = given;
   const outlines = mapOutlines();
-  extent = extentOf(outlines.xs, outlines.ys);
+  if (!(extent[0] <= extent[1])) extent = [0, 1, 0, 1];
   const empty = page.labels.map(() => NaN);
   models.shapes.data = { ...outlines, fill: page.labels.map(() => page.colours.null), px: empty, py: empty, label: page.labels, value: page.labels };
   colourMap();
@@ -223,6 +252,8 @@ function onReady(given) {
     let wasFitted = models.map.inner_width > 0;
     models.map.properties[side].change.connect(() => { fitMap(wasFitted); wasFitted = true; });
   }
+  models.map.x_range.properties.start.change.connect(drawDotsSoon);
+  drawDots();
   if (byId("histogram-column").value) drawHistogram();
   if (byId("scatter-x").value && byId("scatter-y").value) drawScatter();
   document.documentElement.dataset.figures = "ready";
