@@ -67,7 +67,8 @@ def test_a_measured_layer_is_not_measured_again(tmp_path):
 def test_outlines_are_laid_as_a_measurement_lays_them(tmp_path):
     """The record columns of every reference and made-up fault agree with those of `measure`."""
     bow = at(box(0, 0, 1, 1)).__class__([(0, 0), (10, 10), (10, 0), (0, 10)])
-    shapes = [at(bolt()), None, bow, box(0, 0, 0, 5), at(box(0, 0, 9, 9).difference(box(1, 1, 2, 2)))]
+    far = box(1e9, 1e9, 1e9 + 5, 1e9 + 5)
+    shapes = [at(bolt()), None, bow, box(0, 0, 0, 5), far, at(box(0, 0, 9, 9).difference(box(1, 1, 2, 2)))]
     gpd.GeoDataFrame(geometry=shapes, crs="EPSG:3035").to_parquet(tmp_path / "a.parquet")
     for path in (tmp_path / "a.parquet", "tests/data/world_geodesic_area/world.gpkg"):
         for options in (MeasureOptions(families=("extent",)), MeasureOptions(holes="fill", families=("extent",))):
@@ -83,6 +84,14 @@ def test_outlines_are_laid_as_a_measurement_lays_them(tmp_path):
             np.testing.assert_array_equal(record["ground_distortion"], measured["ground_distortion"])
             area = laid.placed.batch.sum_ring_values(laid.placed.batch.ring_signed_area)
             np.testing.assert_allclose(area, np.nan_to_num(measured["area_m2"]), rtol=1e-12)
+
+
+def test_what_the_crs_cannot_hold_is_null_with_its_reason(tmp_path):
+    source = write(tmp_path / "a.gpkg", [box(1e9, 1e9, 1e9 + 5, 1e9 + 5), at(bolt())])
+    redraw_file(source, tmp_path / "o.gpkg")
+    result = gpd.read_file(tmp_path / "o.gpkg")
+    assert result.shape_status.tolist() == ["invalid", "ok"]
+    assert "outside what the layer's CRS can hold" in result.shape_note[0]
 
 
 def test_progress_is_told(tmp_path):

@@ -51,12 +51,8 @@ class ColumnList(click.ParamType[tuple[str, ...]]):
 
     name = "list"
 
-    def convert(
-        self, value: str | tuple[str, ...], param: click.Parameter | None, ctx: click.Context | None
-    ) -> tuple[str, ...]:
+    def convert(self, value: str, param: click.Parameter | None, ctx: click.Context | None) -> tuple[str, ...]:
         """Turn text into names."""
-        if isinstance(value, tuple):
-            return value
         names = tuple(word.strip() for word in value.split(",") if word.strip())
         if not names:
             self.fail(f"{value!r} names no column", param, ctx)

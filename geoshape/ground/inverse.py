@@ -48,7 +48,9 @@ def unproject(
     >>> round(float(longitude[0]), 9), float(latitude[0])
     (100.0, 0.0)
     """
-    centres = Centres.at(centre_deg[:, 1], ellipsoid).take(feature)
+    with np.errstate(invalid="ignore"):
+        # Features that have no place on the globe have no vertices either.
+        centres = Centres.at(centre_deg[:, 1], ellipsoid).take(feature)
     radius = ellipsoid.authalic_radius_m
     east, north = x / (centres.stretch * radius), y * centres.stretch / radius
     half2 = 0.25 * (east * east + north * north)

@@ -128,6 +128,11 @@ def _joint_bounds(own: pyproj.CRS, other: pyproj.CRS, bounds: tuple[Bounds | Non
 def _datum_shift(source: pyproj.CRS, target: pyproj.CRS) -> tuple[pyproj.Transformer, tuple[str, ...]]:
     """Find the best way from one datum to another that this machine knows, and say if it is a rough one."""
     group = TransformerGroup(source, target, always_xy=True)
+    if not group.transformers:
+        raise GroundError(
+            f"PROJ knows no way from {source.name} to {target.name}, so the layers cannot be laid upon each other; "
+            "reproject one of them"
+        )
     best = group.transformers[0]
     if "ballpark" in best.description.lower():
         text = (

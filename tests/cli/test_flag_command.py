@@ -110,6 +110,13 @@ def test_classes_are_judged_by_their_own(geoshape, tmp_path):
     assert gpd.read_file(tmp_path / "o.gpkg").flag[119] == 1
 
 
+def test_long_notes_are_cut_and_shown_when_asked_for(geoshape, tmp_path):
+    source = write(tmp_path / "a.gpkg", [at(box(0, 0, 1, 1))] * 9, kind=list("abcdefghi"))
+    options = ("--unusual", "--columns", "axis_ratio", "--within", "kind")
+    assert "and 4 more notes" in geoshape("flag", source, tmp_path / "o.gpkg", *options).err
+    assert "kind i" in geoshape("flag", source, tmp_path / "p.gpkg", *options, "-v").err
+
+
 WRONG = [
     ((), "there is nothing to flag by"),
     (("--rule", "a: axis_ration < 1"), "did you mean axis_ratio?"),
