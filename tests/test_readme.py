@@ -66,5 +66,5 @@ def test_every_command_is_listed():
     listed = subprocess.run(
         [sys.executable, "-m", "geoshape", "--help"], capture_output=True, text=True, check=True
     ).stdout.partition("Commands:")[2]
-    for name in re.findall(r"^  ([a-z]+) ", listed, re.MULTILINE):
+    for name in re.findall(r"^  ([a-z]+)  +\S", listed, re.MULTILINE):
         assert f"`geoshape {name}" in table, name

@@ -17,8 +17,9 @@ STDOUT = "-"
 @source_options
 @target_options
 @measure_options
+@click.option("--report", "page", metavar="PAGE.html", help="Write a report on the result, too.")
 @manner_options
-def command(source: Source, target: Target, options: MeasureOptions, manner: Manner) -> None:
+def command(source: Source, target: Target, options: MeasureOptions, page: str | None, manner: Manner) -> None:
     """Measure every polygon of INPUT and write the layer with its new columns to OUTPUT.
 
     The extension of OUTPUT decides the format; - writes the table as CSV to standard output. Every row is kept: what
@@ -26,6 +27,8 @@ def command(source: Source, target: Target, options: MeasureOptions, manner: Man
     """
     if manner.as_json and str(target.path) == STDOUT:
         raise click.UsageError("--json and OUTPUT - both write to standard output; choose one")
+    if page is not None:
+        _check_report(page, target)
     from geoshape.cli.terminal import progress_of
     from geoshape.pool import keep_freed_memory
     from geoshape.run import measure_file
@@ -39,3 +42,18 @@ def command(source: Source, target: Target, options: MeasureOptions, manner: Man
         from geoshape.cli.summary import print_summary
 
         print_summary(summary, verbose=manner.verbose)
+    if page is not None:
+        from geoshape.acting.reporting import report_file
+
+        report_file(Source(path=target.path, layer=target.layer), Target(path=page, overwrite=target.overwrite))
+        if not (manner.quiet or manner.as_json):
+            click.echo(f"{'report':<11} {page}", err=True)
+
+
+def _check_report(page: str, target: Target) -> None:
+    """Refuse a report that could not be written, before anything is measured."""
+    if str(target.path) == STDOUT or str(target.path).lower().endswith(".csv"):
+        raise click.UsageError("--report draws outlines, and CSV holds none; write another format")
+    from geoshape.acting.reporting import page_path
+
+    page_path(Target(path=page, overwrite=target.overwrite))
