@@ -24,7 +24,7 @@ import math
 from dataclasses import dataclass
 
 import numpy as np
-from scipy import stats
+from scipy import special
 
 from geoshape.decide.mcd import Subset, least_determinant
 from geoshape.rings import BoolArray, FloatArray
@@ -140,8 +140,12 @@ def consistency_factor(n_columns: int, share: float) -> float:
     """
     if share >= 1:
         return 1.0
-    quantile = stats.chi2.ppf(share, n_columns)
-    return float(share / stats.chi2.cdf(quantile, n_columns + 2))
+    quantile = _chi_square_quantile(share, n_columns)
+    return float(share / special.chdtr(n_columns + 2, quantile))
+
+
+def _chi_square_quantile(share: float, freedom: int) -> float:
+    return float(special.chdtri(freedom, 1 - share))
 
 
 def distance_limit(level: float, n_columns: int, n_support: int) -> float:
@@ -165,7 +169,7 @@ def distance_limit(level: float, n_columns: int, n_support: int) -> float:
     (8.47, 7.38)
     """
     freedom = n_support - n_columns
-    return float(n_columns * (n_support + 1) / freedom * stats.f.ppf(level, n_columns, freedom))
+    return float(n_columns * (n_support + 1) / freedom * special.fdtri(n_columns, freedom, level))
 
 
 def fit_ordinary(values: FloatArray, names: tuple[str, ...], *, level: float, seed: int) -> Ordinary:
@@ -287,7 +291,7 @@ def _reweighted(values: FloatArray, subset: Subset) -> _Estimate:
     distance = squared_distances(values, location, np.asarray(np.linalg.inv(covariance), dtype=np.float64))
     last_covered = math.ceil(subset.share * len(values)) - 1
     support = distance <= np.partition(distance, last_covered)[last_covered]
-    limit = float(stats.chi2.ppf(REWEIGHT_LEVEL, n_columns))
+    limit = _chi_square_quantile(REWEIGHT_LEVEL, n_columns)
     factor = consistency_factor(n_columns, REWEIGHT_LEVEL)
     for _ in range(MAX_REWEIGHTS):
         within = support | (distance < limit)
