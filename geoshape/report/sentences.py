@@ -187,7 +187,7 @@ class Prevailing:
     count : int
         Shapes with a direction.
     mean_deg : float
-        Mean axial direction, clockwise from north, in [0, 180).
+        Mean axial direction, clockwise from north, in [0, 180); NaN where the directions cancel out.
     length : float
         Length of the mean vector of doubled angles: 0 even, 1 all alike.
     probability : float
@@ -211,7 +211,7 @@ def prevailing(view: View) -> Prevailing | None:
     if azimuth is None:
         return None
     found = mean_directions(azimuth, np.zeros(len(azimuth), dtype=np.int64), 1)
-    if np.isnan(found.rayleigh_p[0]) or np.isnan(found.mean_deg[0]):
+    if np.isnan(found.rayleigh_p[0]):
         return None
     count = int(np.count_nonzero(~np.isnan(azimuth)))
     return Prevailing(count, float(found.mean_deg[0]), float(found.resultant_length[0]), float(found.rayleigh_p[0]))
