@@ -18,6 +18,7 @@ if TYPE_CHECKING:
     from geoshape.acting.matching import match_file as match_file
     from geoshape.acting.opened import ActOptions as ActOptions
     from geoshape.acting.redrawing import redraw_file as redraw_file
+    from geoshape.acting.reporting import report_file as report_file
     from geoshape.acting.summarising import summarise_file as summarise_file
     from geoshape.columns import Column as Column
     from geoshape.columns import Status as Status
@@ -42,6 +43,7 @@ if TYPE_CHECKING:
     from geoshape.options import MeasureOptions as MeasureOptions
     from geoshape.options import Source as Source
     from geoshape.options import Target as Target
+    from geoshape.report.data import ReportOptions as ReportOptions
     from geoshape.run import RunSummary as RunSummary
     from geoshape.run import measure_file as measure_file
 
@@ -59,6 +61,7 @@ _HOMES = {
     "MatchOptions": "decide.match",
     "MeasureOptions": "options",
     "RedrawOptions": "decide.redraw",
+    "ReportOptions": "report.data",
     "RunSummary": "run",
     "Source": "options",
     "Status": "columns",
@@ -81,6 +84,7 @@ _HOMES = {
     "read_rules": "acting.flagging",
     "redraw": "frame_decisions",
     "redraw_file": "acting.redrawing",
+    "report_file": "acting.reporting",
     "summarise": "frame_decisions",
     "summarise_file": "acting.summarising",
 }
@@ -97,6 +101,7 @@ __all__ = [
     "MatchOptions",
     "MeasureOptions",
     "RedrawOptions",
+    "ReportOptions",
     "RunSummary",
     "Source",
     "Status",
@@ -120,6 +125,7 @@ __all__ = [
     "read_rules",
     "redraw",
     "redraw_file",
+    "report_file",
     "summarise",
     "summarise_file",
 ]
