@@ -20,6 +20,7 @@ from geoshape.report.statistics import (
     box,
     histogram,
     is_logarithmic,
+    is_one_value,
     log_ticks,
     nice_ticks,
     rose_counts,
@@ -91,7 +92,7 @@ def scale_of(values: FloatArray, field: Column, width: float) -> Scale | None:
         return None
     is_log = is_logarithmic(values, field)
     low, high = float(np.nanmin(values)), float(np.nanmax(values))
-    if low == high:
+    if is_one_value(low, high):
         low, high = low - 0.5 * max(abs(low), 1.0), high + 0.5 * max(abs(high), 1.0)
         is_log = False
     return Scale(low, high, is_log, width)

@@ -17,6 +17,9 @@ MIN_BINS, MAX_BINS = 10, 36
 WIDE_RATIO = 50.0
 """Ratio of the 97.5 % to the 2.5 % quantile from which a positive column is shown on a logarithmic scale."""
 
+ONE_VALUE = 1e-9
+"""Range, relative to the values, that is no range at all."""
+
 ROSE_BINS = 18
 
 ENDS = 3
@@ -106,6 +109,11 @@ class Histogram:
         return np.asarray(self.start + self.step * np.arange(len(self.counts) + 1), dtype=np.float64)
 
 
+def is_one_value(low: float, high: float) -> bool:
+    """Tell whether two ends differ by no more than rounding."""
+    return high - low <= ONE_VALUE * max(abs(low), abs(high))
+
+
 def histogram(values: FloatArray, *, is_log: bool, is_whole: bool = False) -> Histogram:
     """Count values in bins whose width follows Freedman and Diaconis (1981), between 10 and 36 bins.
 
@@ -131,7 +139,7 @@ def histogram(values: FloatArray, *, is_log: bool, is_whole: bool = False) -> Hi
     if is_whole and not is_log and high - low < MAX_BINS:
         counts = np.bincount((known - low).astype(np.int64))
         return Histogram(low - 0.5, 1.0, counts, is_log)
-    if high == low:
+    if is_one_value(low, high):
         half = 0.5 * max(abs(low), 1.0) * 1e-3
         return Histogram(low - half, 2.0 * half, np.array([len(known)]), is_log)
     lower, upper = np.quantile(known, (0.25, 0.75))
@@ -218,7 +226,7 @@ def nice_ticks(low: float, high: float, about: int = 5) -> list[float]:
     >>> nice_ticks(0.0, 1.0), nice_ticks(0.15, 0.97), nice_ticks(3.0, 3.0)
     ([0.0, 0.2, 0.4, 0.6, 0.8, 1.0], [0.2, 0.4, 0.6, 0.8], [3.0])
     """
-    if not high > low:
+    if is_one_value(low, high):
         return [low]
     power = 10.0 ** np.floor(np.log10(high - low))
     steps = [float(f"{power * factor:.12g}") for factor in (0.1, 0.2, 0.5, 1.0, 2.0, 5.0)]

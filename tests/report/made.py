@@ -65,7 +65,7 @@ def decided():
     data = sample("lakes.gpkg")
     n = data.n_rows
     names = data.table.column("name").to_pylist()
-    names[2] = MARKUP
+    names[int(np.argmin(data.table.column("polsby_popper").to_numpy()))] = MARKUP
     table = data.table.set_column(data.table.column_names.index("name"), "name", pa.array(names))
     table = table.set_column(table.column_names.index("lake_type"), "lake <i>type</i>", table.column("lake_type"))
     data = replace(data, table=table)
@@ -85,6 +85,13 @@ def decided():
         data = with_column(data, name, values)
     rules = [{"name": "narrow", "rule": "axis_ratio < 0.35", "message": "too <b>narrow</b>"}]
     return replace(data, lineage={**data.lineage, "options": {"rules": rules, "measure": data.lineage["options"]}})
+
+
+@cache
+def few():
+    """A few lakes."""
+    data = sample("lakes.gpkg")
+    return replace(data, table=data.table.slice(0, 12), geometry=data.geometry[:12])
 
 
 def squares(n, *, crs="EPSG:32633", side=10.0):
