@@ -194,6 +194,12 @@ def test_a_run_that_is_killed_leaves_the_old_output_and_no_workers(sign, tmp_pat
     target.write_bytes(b"old")
     command = [sys.executable, "-m", "geoshape", "measure", str(source), str(target), "--overwrite", "--jobs", "2",
                "--samples", "16384"]  # fmt: skip
+    # A shell that starts the tests in the background has them ignore interrupts, and their children with them.
+    hearing = (
+        "import os, signal, sys; signal.signal(signal.SIGINT, signal.SIG_DFL); "
+        "os.execv(sys.executable, [sys.executable, *sys.argv[1:]])"
+    )
+    command = [sys.executable, "-c", hearing, *command[1:]]
     run = subprocess.Popen(command, stderr=subprocess.PIPE, start_new_session=True)
     deadline = time.monotonic() + 60
     while not list(tmp_path.glob(".geoshape-*")) and time.monotonic() < deadline and run.poll() is None:

@@ -14,6 +14,7 @@ from __future__ import annotations
 
 import datetime as dt
 import operator
+import re
 import unicodedata
 from collections.abc import Callable
 from functools import reduce
@@ -191,10 +192,26 @@ def _as_numpy(values: Values) -> object:
     return values.to_numpy(zero_copy_only=False)
 
 
+def _as_regex(pattern: str) -> str:
+    """Translate a pattern of LIKE: % any text, _ any character, a backslash takes the next character as it is.
+
+    Arrow's own matcher takes an escaped backslash at the end of ``%...`` for two.
+    """
+    parts, rest = [], iter(pattern)
+    for mark in rest:
+        if mark == "%":
+            parts.append(".*")
+        elif mark == "_":
+            parts.append(".")
+        else:
+            parts.append(re.escape(next(rest, mark) if mark == "\\" else mark))
+    return rf"(?s)\A(?:{''.join(parts)})\z"
+
+
 def _like(values: Values, pattern: Values) -> Values:
     if pa.types.is_null(values.type):
         return values.cast(pa.bool_())
-    return pc.match_like(values, pattern.as_py())
+    return pc.match_substring_regex(values, _as_regex(pattern.as_py()))
 
 
 def _mapped(values: Values, change: Callable[[str], str]) -> Values:

@@ -9,7 +9,7 @@ import cql2
 import numpy as np
 import pyarrow as pa
 import pytest
-from hypothesis import assume, given, settings
+from hypothesis import assume, example, given, settings
 from hypothesis import strategies as st
 
 from geoshape.decide.cql import evaluate
@@ -508,6 +508,7 @@ def test_without_nulls_the_parsers_own_matcher_agrees(condition, rows):
 
 @settings(derandomize=True, deadline=None, max_examples=300)
 @given(st.lists(st.text(alphabet="ab%_\\\nÄ", max_size=5), max_size=6), st.text(alphabet="ab%_\\\nÄ", max_size=4))
+@example(["\\"], "%\\")
 def test_like_against_a_pattern_translated_by_hand(words, pattern):
     if (len(pattern) - len(pattern.rstrip("\\"))) % 2:
         pattern += "\\"

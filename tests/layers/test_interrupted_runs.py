@@ -98,6 +98,8 @@ def test_killed_run(old: Path) -> None:
 
 def test_interrupt_from_the_keyboard_while_gdal_writes(tmp_path: Path) -> None:
     path = tmp_path / "out.gpkg"
+    # A shell that starts the tests in the background has them ignore interrupts.
+    before = signal.signal(signal.SIGINT, signal.default_int_handler)
 
     def batches() -> object:
         for i in range(10_000):
@@ -105,8 +107,11 @@ def test_interrupt_from_the_keyboard_while_gdal_writes(tmp_path: Path) -> None:
                 os.kill(os.getpid(), signal.SIGINT)
             yield samples.numbered(samples.POLYGON, first=i)
 
-    with pytest.raises(KeyboardInterrupt):
-        write_batches(plan_output(path, samples.plain_content()), batches())  # type: ignore[arg-type]
+    try:
+        with pytest.raises(KeyboardInterrupt):
+            write_batches(plan_output(path, samples.plain_content()), batches())  # type: ignore[arg-type]
+    finally:
+        signal.signal(signal.SIGINT, before)
     assert list(tmp_path.iterdir()) == []
 
 
