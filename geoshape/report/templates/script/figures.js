@@ -2,7 +2,6 @@
 
 const axes = { histogram: { x: null, y: null }, scatter: { x: null, y: null } };
 let models = null;
-let isFollowing = false;
 let extent = [Infinity, -Infinity, Infinity, -Infinity];
 
 // Shapes smaller than this on the screen are shown as dots, else their colour would drown in their outline.
@@ -259,22 +258,22 @@ function onReady(given) {
   document.documentElement.dataset.figures = "ready";
 }
 
+// Callbacks come late: what is chosen already was chosen elsewhere.
 function onFigures(indices) {
-  if (!isFollowing) choose([...indices]);
+  const isKnown = indices.length === chosen.shapes.length && indices.every((shape, i) => shape === chosen.shapes[i]);
+  if (!isKnown) choose([...indices]);
 }
 
 function onBars(indices) {
-  if (!indices.length || isFollowing) return;
+  if (!indices.length) return;
   const field = fields.get(byId("histogram-column").value), values = valuesOf(field), bins = new Set(indices);
   choose([...values.keys()].filter((shape) => bins.has(binOf(field, values[shape]))));
 }
 
 onChoice(({ shapes }) => {
   if (!models) return;
-  isFollowing = true;
   models.shapes.selected.indices = shapes;
   models.bars.selected.indices = [];
-  isFollowing = false;
   if (byId("histogram-column").value) countChosen();
 });
 
