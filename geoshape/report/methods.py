@@ -10,7 +10,7 @@ from typing import Any
 import numpy as np
 
 from geoshape.columns import RECORD, Column, Kind
-from geoshape.report.data import ATTRIBUTE, ERROR, STANDARD_ERROR, View
+from geoshape.report.data import ATTRIBUTE, ERROR, View
 from geoshape.report.placing import layer_crs
 from geoshape.report.sentences import status_counts
 from geoshape.report.wording import (
@@ -338,8 +338,3 @@ def _bounds_text(field: Column) -> str:
     if not high:
         return f"\u2265 {low}"
     return f"{low} \u2013 {high}" if low else f"\u2264 {high}"
-
-
-def error_name(name: str) -> str:
-    """Name the column that holds a column's standard error."""
-    return name + STANDARD_ERROR

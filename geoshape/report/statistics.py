@@ -20,6 +20,8 @@ WIDE_RATIO = 50.0
 ONE_VALUE = 1e-9
 """Range, relative to the values, that is no range at all."""
 
+MOST_LOG_TICKS = 5
+
 ROSE_BINS = 18
 
 ENDS = 3
@@ -240,17 +242,20 @@ def _count_inside(low: float, high: float, step: float) -> int:
 
 
 def log_ticks(low: float, high: float) -> list[float]:
-    """Choose powers of ten between two values, with twos and fives where they would be few.
+    """Choose at most five powers of ten between two values, with threes, or twos and fives, where they would be few.
 
     Examples
     --------
-    >>> log_ticks(3.0, 2000.0), log_ticks(1.0, 30.0)
-    ([10.0, 100.0, 1000.0], [1.0, 2.0, 5.0, 10.0, 20.0])
+    >>> log_ticks(3.0, 20_000.0), log_ticks(1.0, 30.0), log_ticks(4.0, 7.0)
+    ([10.0, 100.0, 1000.0, 10000.0], [1.0, 2.0, 5.0, 10.0, 20.0], [4.0, 5.0, 6.0, 7.0])
     """
     first, last = int(np.floor(np.log10(low))), int(np.ceil(np.log10(high)))
-    inside = [10.0**power for power in range(first, last + 1) if low <= 10.0**power <= high]
-    if len(inside) >= 3:
-        return inside[:: max(1, len(inside) // 5)]
-    steps = [factor * 10.0**power for power in range(first, last + 1) for factor in (1.0, 2.0, 5.0)]
-    found = [float(f"{value:.6g}") for value in steps if low <= value <= high]
-    return found if len(found) >= 2 else nice_ticks(low, high, 3)
+    choices = []
+    for factors in ((1.0,), (1.0, 3.0), (1.0, 2.0, 5.0)):
+        ticks = [float(f"{factor * 10.0**power:.6g}") for power in range(first, last + 1) for factor in factors]
+        choices.append([tick for tick in ticks if low <= tick <= high])
+    few = [ticks for ticks in choices if len(ticks) <= MOST_LOG_TICKS]
+    most = few[-1] if few else choices[0]
+    if len(most) < 2:
+        return nice_ticks(low, high, 4)
+    return most[:: -(-len(most) // MOST_LOG_TICKS)]

@@ -79,12 +79,14 @@ def decided():
         "group_distance": np.abs(ratio - np.median(ratio)),
         "is_prototype": prototype,
         "flag": flag,
-        "flag_reasons": np.where(flag, "narrow; <i>odd</i>", None),
+        "flag_reasons": np.where(flag, "narrow; <i>odd</i>; unusual", None),
         "flag_score": np.where(flag, 1.0 / ratio, np.nan),
     }.items():
         data = with_column(data, name, values)
     rules = [{"name": "narrow", "rule": "axis_ratio < 0.35", "message": "too <b>narrow</b>"}]
-    return replace(data, lineage={**data.lineage, "options": {"rules": rules, "measure": data.lineage["options"]}})
+    unusual = {"columns": ["axis_ratio", "reock"]}
+    options = {"rules": rules, "unusual": unusual, "measure": data.lineage["options"]}
+    return replace(data, lineage={**data.lineage, "options": options})
 
 
 @cache

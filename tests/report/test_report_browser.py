@@ -307,52 +307,67 @@ def test_the_map_keeps_its_aspect(page):
     page.page.set_viewport_size({"width": 1440, "height": 900})
 
 
+def test_under_a_finger_the_figures_scroll_with_the_page(browser, decided_page):
+    opened = Opened(browser, decided_page, viewport={"width": 390, "height": 800}, has_touch=True, is_mobile=True)
+    active = opened.do(
+        """() => Bokeh.documents[0].get_model_by_name("map").toolbar.tools
+             .filter((tool) => tool.active && tool.event_types.includes("pan")).length"""
+    )
+    assert active == 0
+    opened.close()
+
+
 @pytest.mark.parametrize("width", [390, 768, 1440])
-def test_no_page_is_wider_than_the_screen(browser, decided_page, width):
-    opened = Opened(browser, decided_page, viewport={"width": width, "height": 800})
-    assert opened.do("document.documentElement.scrollWidth") <= width
+def test_no_page_is_wider_than_the_screen(page, width):
+    page.page.set_viewport_size({"width": width, "height": 900})
+    assert page.do("document.documentElement.scrollWidth") <= width
     # Nothing but frames that scroll by themselves reaches beyond the edge.
-    beyond = opened.do(
+    beyond = page.do(
         """(width) => [...document.querySelectorAll('main *')]
              .filter((one) => !one.closest('.table-frame, .unseen') && one.getBoundingClientRect().right > width + 1)
              .map((one) => one.outerHTML.slice(0, 80))""",
         width,
     )
     assert beyond == []
-    opened.close()
+    page.page.set_viewport_size({"width": 1440, "height": 900})
 
 
-def test_prints_on_whole_pages(browser, decided_page):
-    opened = Opened(browser, decided_page, viewport={"width": A4_PIXELS, "height": 960})
-    sheet = opened.page.pdf(prefer_css_page_size=True)
+@pytest.fixture(scope="module")
+def on_paper(browser, decided_page):
+    """The page as wide as a printed line."""
+    found = Opened(browser, decided_page, viewport={"width": A4_PIXELS, "height": 960})
+    yield found
+    found.close()
+
+
+def test_prints_on_whole_pages(on_paper):
+    sheet = on_paper.page.pdf(prefer_css_page_size=True)
     pages = len(re.findall(rb"/Type\s*/Page\b", sheet))
     sizes = {
         tuple(round(float(side)) for side in box.split()[2:]) for box in re.findall(rb"/MediaBox\s*\[([^\]]*)\]", sheet)
     }
     assert 5 <= pages <= 25
     assert sizes == {(595, 842)}
-    assert opened.complaints == []
-    opened.close()
+    assert on_paper.complaints == []
 
 
-def test_print_has_still_figures_and_no_cut_tables(browser, decided_page):
-    opened = Opened(browser, decided_page, viewport={"width": A4_PIXELS, "height": 960})
-    opened.page.emulate_media(media="print")
-    opened.do("window.dispatchEvent(new Event('beforeprint'))")
-    assert not opened.page.locator(".linked").is_visible()
-    assert opened.page.locator(".paper-map > svg").is_visible()
-    assert opened.page.locator(".paper-table").is_visible()
-    assert opened.do("document.documentElement.scrollWidth") <= A4_PIXELS
-    assert opened.do("[...document.querySelectorAll('details')].every((one) => one.open)")
-    cut = opened.do(
+def test_print_has_still_figures_and_no_cut_tables(on_paper):
+    on_paper.page.emulate_media(media="print")
+    on_paper.do("window.dispatchEvent(new Event('beforeprint'))")
+    assert not on_paper.page.locator(".linked").is_visible()
+    assert on_paper.page.locator(".paper-map > svg").is_visible()
+    assert on_paper.page.locator(".paper-table").is_visible()
+    assert on_paper.do("document.documentElement.scrollWidth") <= A4_PIXELS
+    assert on_paper.do("[...document.querySelectorAll('details')].every((one) => one.open)")
+    cut = on_paper.do(
         """() => [...document.querySelectorAll('table')]
              .filter((one) => one.offsetParent && one.getBoundingClientRect().right > innerWidth + 1)
              .map((one) => one.caption?.textContent)"""
     )
     assert cut == []
-    heads = opened.do("""() => [...document.querySelectorAll('thead')].map((one) => getComputedStyle(one).display)""")
+    heads = on_paper.do("""() => [...document.querySelectorAll('thead')].map((one) => getComputedStyle(one).display)""")
     assert set(heads) == {"table-header-group"}
-    opened.close()
+    on_paper.page.emulate_media(media="screen")
 
 
 def test_without_script_the_still_figures_are_there(browser, decided_page):
@@ -365,10 +380,10 @@ def test_without_script_the_still_figures_are_there(browser, decided_page):
 
 
 @pytest.mark.parametrize("width", [390, 1440])
-def test_axe_finds_no_serious_violation(browser, decided_page, axe, width):
-    opened = Opened(browser, decided_page, viewport={"width": width, "height": 900})
-    opened.do(axe)
-    found = opened.do("axe.run(document, {resultTypes: ['violations']})")
+def test_axe_finds_no_serious_violation(page, axe, width):
+    page.page.set_viewport_size({"width": width, "height": 900})
+    page.do(axe)
+    found = page.do("axe.run(document, {resultTypes: ['violations']})")
     serious = [
         (one["id"], one["help"], [node["html"][:120] for node in one["nodes"]][:5])
         for one in found["violations"]
@@ -376,7 +391,7 @@ def test_axe_finds_no_serious_violation(browser, decided_page, axe, width):
     ]
     assert serious == []
     assert len(found["passes"]) > 20
-    opened.close()
+    page.page.set_viewport_size({"width": 1440, "height": 900})
 
 
 @pytest.mark.slow

@@ -14,7 +14,10 @@ SVG = "{http://www.w3.org/2000/svg}"
 def written(tmp_path_factory):
     folder = tmp_path_factory.mktemp("figures") / "new"
     options = ReportOptions(map_column="polsby_popper", class_column="lake <i>type</i>")
-    return folder, write_figures(made.decided(), folder, options)
+    with pytest.MonkeyPatch.context() as patch:
+        # As sharp as a paper asks for takes long.
+        patch.setattr(figures, "PNG_DPI", 72)
+        return folder, write_figures(made.decided(), folder, options)
 
 
 def texts_of(path):

@@ -48,7 +48,7 @@ def test_facts_leave_out_what_is_not_known():
 def test_options_of_decisions_are_told():
     told = {fact.term: fact.text for fact in facts(View(made.decided(), ReportOptions()))}
     assert told["Options"].startswith(
-        "rules: (name: narrow; rule: axis_ratio < 0.35; message: too <b>narrow</b>); measure: ("
+        "rules: (name: narrow; rule: axis_ratio < 0.35; message: too <b>narrow</b>); unusual: (columns: axis_ratio, reock); measure: ("
     )
 
 

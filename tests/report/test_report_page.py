@@ -252,7 +252,8 @@ def test_long_texts_are_cut():
 def test_flags_are_listed_with_their_rules(decided):
     cells = [element["text"] for element in decided.all("td", "th")]
     assert "axis_ratio < 0.35: too <b>narrow</b>" in cells
-    assert "narrow; <i>odd</i>" in cells
+    assert "narrow; <i>odd</i>; unusual" in cells
+    assert "unlike the rest by axis_ratio, reock" in cells
 
 
 def test_groups_begin_with_their_prototype(decided):

@@ -59,8 +59,9 @@ def test_the_choice_grows_for_flags_but_not_without_end():
     assert f"{sample.n_flagged_kept} of the 5\u202f000 flagged" in sample.statement
 
 
-def test_prototypes_are_kept():
-    columns = {"area_m2": np.random.default_rng(1).random(3000), "is_prototype": np.arange(3000) == 1234}
+@pytest.mark.parametrize("kind", [bool, int])
+def test_prototypes_are_kept(kind):
+    columns = {"area_m2": np.random.default_rng(1).random(3000), "is_prototype": (np.arange(3000) == 1234).astype(kind)}
     assert 1234 in choose_rows(view_of(columns, max_rows=50)).rows
 
 

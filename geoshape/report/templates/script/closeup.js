@@ -136,8 +136,11 @@ function drawSpectrum(shape) {
   svg.replaceChildren(draw("title", {}, `Spectrum of ${page.labels[shape]}`));
   const size = amplitude(shape, 1);
   if (!(size > 0)) return;
-  const y = (share) => top + ((bottom - top) * Math.min(Math.log10(share), 0)) / floor;
-  for (let power = 0; power >= floor; power -= 1) {
+  const shares = Array.from({ length: 2 * HARMONICS }, (_, i) => amplitude(shape, i < HARMONICS ? i + 1 : HARMONICS - i - 1) / size);
+  // An outline that winds about itself has harmonics above the first.
+  const ceiling = Math.max(Math.ceil(Math.log10(Math.max(...shares)) - 1e-9), 0);
+  const y = (share) => top + ((bottom - top) * (ceiling - Math.log10(share))) / (ceiling - floor);
+  for (let power = ceiling; power >= floor; power -= 1) {
     const level = y(10 ** power);
     svg.append(draw("line", { class: "grid", x1: left, x2: right, y1: level, y2: level }), draw("text", { x: left - 8, y: level + 6, "text-anchor": "end" }, `${numberText(100 * 10 ** power)} %`));
   }

@@ -213,13 +213,16 @@ function ticks(plot, side, range) {
   const [low, high] = [range.start, range.end];
   if (!axis || !(high > low)) return [];
   if (axis.isLog && high - low > 0.6) {
-    const factors = high - low > 2.5 ? [1] : [1, 2, 5];
-    const found = [];
-    for (let power = Math.floor(low); power <= Math.ceil(high); power++)
-      for (const factor of factors) found.push(power + Math.log10(factor));
-    const inside = found.filter((tick) => tick >= low && tick <= high);
-    const each = Math.ceil(inside.length / 6);
-    return inside.filter((_, i) => i % each === 0);
+    const ticksWith = (factors) => {
+      const found = [];
+      for (let power = Math.floor(low); power <= Math.ceil(high); power++)
+        for (const factor of factors) found.push(power + Math.log10(factor));
+      return found.filter((tick) => tick >= low && tick <= high);
+    };
+    const few = [[1], [1, 3], [1, 2, 5]].map(ticksWith).filter((found) => found.length <= 5);
+    const most = few.length ? few[few.length - 1] : ticksWith([1]);
+    const each = Math.ceil(most.length / 5);
+    return most.filter((_, i) => i % each === 0);
   }
   const power = 10 ** Math.floor(Math.log10(high - low));
   const about = side === "x" ? 5 : 4;
@@ -239,8 +242,16 @@ function tickText(plot, side, tick) {
   return mantissa === "1" ? raised : `${mantissa}\u00d7${raised}`;
 }
 
+// Under a finger a figure scrolls with the page, until the reader picks a tool.
+function letTouchScroll() {
+  if (!matchMedia("(pointer: coarse)").matches) return;
+  for (const plot of [models.map, models.histogram, models.scatter])
+    for (const tool of plot.toolbar.tools) if (tool.active && tool.event_types.includes("pan")) tool.active = false;
+}
+
 function onReady(given) {
   models = given;
+  letTouchScroll();
   const outlines = mapOutlines();
   if (!(extent[0] <= extent[1])) extent = [0, 1, 0, 1];
   const empty = page.labels.map(() => NaN);
