@@ -12,7 +12,7 @@ import pyarrow as pa
 import pyarrow.compute as pc
 from numpy.typing import NDArray
 
-from geoshape.columns import RECORD, Column, Kind
+from geoshape.columns import BIAS_SUFFIX, ERROR_SUFFIX, RECORD, Column, Kind
 from geoshape.decide.flag import FLAG_COLUMNS
 from geoshape.errors import OptionError
 from geoshape.options import MeasureOptions
@@ -20,9 +20,6 @@ from geoshape.report.statistics import ENDS, ends_and_middle
 from geoshape.rings import FloatArray, IntArray
 
 ObjectArray = NDArray[np.object_]
-
-STANDARD_ERROR = "_se"
-"""Ending of the column that holds another column's standard error."""
 
 ATTRIBUTE = "attribute"
 ERROR = "error"
@@ -196,17 +193,17 @@ class View:
     def fields(self) -> tuple[Column, ...]:
         """Every column of the table in its order, attributes and decisions described like measured ones."""
         measured = {column.name: column for column in self.data.columns}
-        return tuple(
-            measured.get(name) or self._describe(name, self.data.table.schema.field(name).type, measured)
-            for name in self.data.table.column_names
-        )
+        schema = self.data.table.schema
+        return tuple(self._describe(name, schema.field(name).type, measured) for name in schema.names)
 
     def _describe(self, name: str, kind: pa.DataType, measured: Mapping[str, Column]) -> Column:
+        base = measured.get(name.removesuffix(ERROR_SUFFIX).removesuffix(BIAS_SUFFIX))
+        if base is not None and base.name != name:
+            meaning = f"{'standard error' if name.endswith(ERROR_SUFFIX) else 'mean shift'} of {base.name}"
+            return replace(measured.get(name, base), name=name, meaning=meaning, low=None, high=None, family=ERROR)
+        if name in measured:
+            return measured[name]
         holds = _kind_of(self.data.table.column(name), kind)
-        base = measured.get(name.removesuffix(STANDARD_ERROR)) if name.endswith(STANDARD_ERROR) else None
-        if base is not None:
-            meaning = f"standard error of {base.name}"
-            return replace(base, name=name, kind=holds, low=0.0, high=None, meaning=meaning, family=ERROR)
         decided = _DECIDED.get(name.removeprefix(self.prefix))
         if decided is not None:
             return replace(decided, name=name, kind=holds)

@@ -42,7 +42,7 @@ FAMILY_TITLES = {
     "axes": "Principal axes",
     "moments": "Moment invariants",
     "spectrum": "Spectrum of the outline",
-    ERROR: "Standard errors",
+    ERROR: "Errors of position",
     "flag": "Flags",
     "group": "Groups",
     "match": "Match to a template",
@@ -157,12 +157,17 @@ def _when_text(view: View) -> str:
 
 def formulas(view: View) -> tuple[tuple[str, tuple[Formula, ...]], ...]:
     """List the definitions of the measured columns by family, amplitudes of one kind in one line."""
+    columns = [field for field in map(view.by_name.__getitem__, _measured_names(view)) if field.family != ERROR]
     named = [
-        (family_title(family), tuple(_formulas_of(columns, view.prefix)))
-        for family, columns in groupby(view.data.columns, key=lambda column: column.family)
+        (family_title(family), tuple(_formulas_of(members, view.prefix)))
+        for family, members in groupby(columns, key=lambda column: column.family)
         if family != RECORD
     ]
     return tuple((title, found) for title, found in named if found)
+
+
+def _measured_names(view: View) -> list[str]:
+    return [column.name for column in view.data.columns]
 
 
 def _formulas_of(columns: Iterable[Column], prefix: str) -> Iterable[Formula]:
@@ -197,7 +202,7 @@ def paragraph(view: View) -> str:
     if any(column.family == "spectrum" for column in view.data.columns):
         how = "in closed form" if options.spectrum == "exact" else f"from {options.samples} points at equal arc length"
         text.append(f"Fourier descriptors describe the exterior of the largest part of each shape, {how}.")
-    text.append(_status_sentence(view))
+    text += [_error_sentence(view), _status_sentence(view)]
     sources = dict.fromkeys(
         source.strip() for column in view.data.columns for source in column.source.split(";") if source.strip()
     )
@@ -225,6 +230,16 @@ def _degrees_text(angle_deg: float) -> str:
     if angle_deg < SMALLEST_TOLD_DEG:
         return f"under {number_text(SMALLEST_TOLD_DEG)}\u00b0"
     return f"{number_text(angle_deg, 3)}\u00b0"
+
+
+def _error_sentence(view: View) -> str:
+    options = view.measure_options
+    if options.position_error_m is None or not any(field.family == ERROR for field in view.fields):
+        return ""
+    error = f"{number_text(options.position_error_m)} m"
+    return (
+        f"Standard errors are of {options.error_runs} runs in which vertices were moved by a position error of {error}."
+    )
 
 
 def _status_sentence(view: View) -> str:

@@ -6,9 +6,9 @@ from typing import Any
 
 import numpy as np
 
-from geoshape.columns import Column, Kind
+from geoshape.columns import BIAS_SUFFIX, ERROR_SUFFIX, Column, Kind
 from geoshape.report.colours import CLASSES, INK, NULL_FILL, OTHER, RAMP, SEAL
-from geoshape.report.data import ATTRIBUTE, ERROR, STANDARD_ERROR, View
+from geoshape.report.data import ATTRIBUTE, ERROR, View
 from geoshape.report.encoding import extents, packed, packed_complex, packed_rings, simplified
 from geoshape.report.methods import family_title
 from geoshape.report.placing import CloseUps, MapPlane
@@ -101,8 +101,9 @@ def _field(view: View, field: Column, rows: IntArray) -> dict[str, Any]:
         "family": field.family,
         "classes": view.levels(field.name) if field.name in view.classes else None,
     }
-    if field.name + STANDARD_ERROR in view.by_name:
-        described["error"] = field.name + STANDARD_ERROR
+    for key, suffix in (("error", ERROR_SUFFIX), ("bias", BIAS_SUFFIX)):
+        if field.name + suffix in view.by_name:
+            described[key] = field.name + suffix
     if field.kind is Kind.TEXT:
         described["texts"] = [None if text is None else _cut(text) for text in view.texts(field.name, rows)]
         return described

@@ -75,6 +75,7 @@ def decided():
     flag = ratio < 0.35
     for name, values in {
         "polsby_popper_se": 0.01 * (1 + np.arange(n) / n),
+        "polsby_popper_bias": np.full(n, -0.025),
         "group": group,
         "group_distance": np.abs(ratio - np.median(ratio)),
         "is_prototype": prototype,

@@ -211,7 +211,7 @@ def test_numbers_shown_closely_are_those_of_the_columns(page):
             """() => Object.fromEntries([...document.querySelectorAll('#closeup-numbers td')]
                  .map((cell) => [cell.dataset.column, [cell.dataset.value, cell.textContent]]))"""
         )
-        assert set(shown) == set(data.table.column_names) - {"polsby_popper_se"}
+        assert set(shown) == set(data.table.column_names) - {"polsby_popper_se", "polsby_popper_bias"}
         for name in (column.name for column in data.columns):
             value, text = shown[name]
             expected = data.table.column(name)[shape].as_py()
@@ -221,6 +221,7 @@ def test_numbers_shown_closely_are_those_of_the_columns(page):
             assert float(value) == expected, name
             assert math.isclose(number_of(text), expected, rel_tol=6e-5, abs_tol=0), name
         assert " \u00b1\u00a00.0" in shown["polsby_popper"][1]
+        assert shown["polsby_popper"][1].endswith("shift\u00a0\u22120.025")
 
 
 def test_a_name_full_of_markup_is_text_everywhere(page):

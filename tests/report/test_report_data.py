@@ -66,6 +66,7 @@ def test_kinds_families_and_units_of_all_columns():
     assert fields["survey_year"].kind is Kind.COUNT
     assert fields["polsby_popper_se"].family == ERROR
     assert fields["polsby_popper_se"].meaning == "standard error of polsby_popper"
+    assert fields["polsby_popper_bias"].meaning == "mean shift of polsby_popper"
     assert fields["flag"].family == fields["flag_reasons"].family == "flag"
     assert fields["group"].family == fields["is_prototype"].family == "group"
 

@@ -47,9 +47,8 @@ def test_facts_leave_out_what_is_not_known():
 
 def test_options_of_decisions_are_told():
     told = {fact.term: fact.text for fact in facts(View(made.decided(), ReportOptions()))}
-    assert told["Options"].startswith(
-        "rules: (name: narrow; rule: axis_ratio < 0.35; message: too <b>narrow</b>); unusual: (columns: axis_ratio, reock); measure: ("
-    )
+    rule = "(name: narrow; rule: axis_ratio < 0.35; message: too <b>narrow</b>)"
+    assert told["Options"].startswith(f"rules: {rule}; unusual: (columns: axis_ratio, reock); measure: (")
 
 
 def test_large_deformations_are_told():
@@ -189,3 +188,26 @@ def test_nothing_counts_without_values():
     assert cautions(view_of({"part_count": np.zeros(0)})) == (
         "No digitising error was stated, so the numbers come without standard errors.",
     )
+
+
+@pytest.fixture(scope="module")
+def disturbed():
+    """Squares whose columns come with standard errors and mean shifts."""
+    options = MeasureOptions(position_error_m=0.25, error_runs=8, families=("extent", "compactness"))
+    return View(made.report_data(made.squares(3), options), ReportOptions())
+
+
+def test_errors_of_position_are_a_family_of_their_own(disturbed):
+    told = {title: [entry.name for entry in entries] for title, entries in dictionary(disturbed)}
+    assert {"area_m2_se", "perimeter_m_bias"} <= set(told["Errors of position"])
+    assert "area_m2_se" not in told["Extent"]
+    listed = [formula.name for _, found in formulas(disturbed) for formula in found]
+    assert "area_m2" in listed
+    assert not [name for name in listed if name.endswith(("_se", "_bias"))]
+
+
+def test_errors_of_position_are_in_the_paragraph(disturbed):
+    expected = "Standard errors are of 8 runs in which vertices were moved by a position error of 0.25 m."
+    assert expected in paragraph(disturbed)
+    assert not [caution for caution in cautions(disturbed) if "No digitising error" in caution]
+    assert expected not in paragraph(View(made.report_data(made.squares(3)), ReportOptions()))

@@ -265,4 +265,5 @@ def test_groups_begin_with_their_prototype(decided):
 def test_errors_stand_by_their_columns(decided):
     fields = {field["name"]: field for field in data_of(decided)["fields"]}
     assert fields["polsby_popper"]["error"] == "polsby_popper_se"
+    assert fields["polsby_popper"]["bias"] == "polsby_popper_bias"
     assert "error" not in fields["reock"]

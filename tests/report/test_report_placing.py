@@ -80,12 +80,12 @@ def test_spectra_are_those_of_the_columns(measured):
 
 def test_what_harmonics_leave_out_is_what_the_points_show(measured):
     view, shapes = measured
-    if view.measure_options.spectrum == "exact":
-        pytest.skip("points and closed form differ by the sampling")
+    # Points and closed form differ by the sampling.
+    tolerance = 0.02 if view.measure_options.spectrum == "exact" else 1e-6
     n, orders = shapes.points.shape[1], np.arange(shapes.coefficients.shape[1]) - shapes.coefficients.shape[1] // 2
     turns = np.exp(2j * np.pi * orders[:, None] * np.arange(n) / n)
     left = shapes.points - shapes.coefficients @ turns
-    np.testing.assert_allclose(shapes.beyond, (np.abs(left) ** 2).mean(axis=1), rtol=1e-6)
+    np.testing.assert_allclose(shapes.beyond, (np.abs(left) ** 2).mean(axis=1), rtol=tolerance)
 
 
 def test_points_lie_on_the_outline(measured):

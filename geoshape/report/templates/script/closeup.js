@@ -160,10 +160,12 @@ function drawSpectrum(shape) {
 }
 
 function numberRow(field, shape) {
-  const error = field.error ? valuesOf(fields.get(field.error))[shape] : NaN;
+  const errorOf = (name) => (name ? valuesOf(fields.get(name))[shape] : NaN);
+  const error = errorOf(field.error), bias = errorOf(field.bias);
   const value = isNumeric(field) ? valuesOf(field)[shape] : field.texts[shape];
   const shown = [textAt(field, shape, 5)];
   if (Number.isFinite(error)) shown.push(make("span", { class: "error" }, ` \u00b1\u00a0${withUnit(field, numberText(error, 2))}`));
+  if (Number.isFinite(bias)) shown.push(make("span", { class: "error shift" }, `shift\u00a0${withUnit(field, numberText(bias, 2))}`));
   const meaning = field.meaning && field.family !== "attribute" ? make("span", { class: "meaning" }, field.meaning) : null;
   return make("tr", {}, make("th", { scope: "row" }, make("span", { class: "title" }, field.title), meaning),
     make("td", { class: isNumeric(field) ? "number" : null, "data-column": field.name, "data-value": value ?? "" }, ...shown));
