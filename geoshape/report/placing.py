@@ -194,15 +194,27 @@ def _spectra(
     points = arclength.resample(rings, options.samples)
     if options.spectrum is Spectrum.EXACT:
         coefficients = fourier.exact_coefficients(rings, highest)
+        whole = _mean_square(rings)
     else:
         coefficients = fourier.sampled_coefficients(points, highest)
-    # Parseval: what the samples hold and the harmonics do not.
-    power = (np.abs(points) ** 2).mean(axis=1) - (np.abs(coefficients) ** 2).sum(axis=1)
+        whole = (np.abs(points) ** 2).mean(axis=1)
+    # Parseval: what the outline holds and the harmonics do not.
+    power = whole - (np.abs(coefficients) ** 2).sum(axis=1)
     return (
         _by_feature(points, rings),
         _by_feature(coefficients, rings),
         _by_feature(np.maximum(power, 0.0), rings),
     )
+
+
+def _mean_square(rings: RingBatch) -> FloatArray:
+    """Average the squared distance from the origin along each ring: a third of |a|^2 + |b|^2 + a.b on each edge."""
+    length = arclength.edge_lengths(rings)
+    squares = (
+        rings.x**2 + rings.y**2 + rings.next_x**2 + rings.next_y**2 + rings.x * rings.next_x + rings.y * rings.next_y
+    )
+    total = rings.sum_rings(length)
+    return rings.sum_rings(length * squares) / (3.0 * np.where(total > 0, total, 1.0))
 
 
 def _by_feature(values: _Numbers, rings: RingBatch) -> _Numbers:
